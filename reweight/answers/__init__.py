@@ -1,0 +1,1 @@
+"""Questions put to a combined object: values, standard errors, intervals, reach, labels."""

@@ -1,0 +1,61 @@
+"""How an answer is expressed: total or per count, in which energy unit, under which label."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+from reweight.density_of_states import DensityOfStates
+from reweight.errors import InputError
+from reweight.labels import energy_unit_label
+from reweight.quantities.quantity import Measure, Quantity, Scaling
+from reweight.units import energy_factor
+
+__all__ = ["Presentation", "presentation"]
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Presentation:
+    """Factor and unit of an answer.
+
+    Attributes
+    ----------
+    factor : float
+        By which values on the study's scale are multiplied.
+    unit : str
+        UDUNITS spelling.
+    per : str or None
+        What an answer is per; None for totals and intensive quantities.
+    """
+
+    factor: float
+    unit: str
+    per: str | None
+
+
+def presentation(
+    combined: DensityOfStates, quantity: Quantity, *, per_count: bool = False, energy_unit: str | None = None
+) -> Presentation:
+    """Express a quantity as asked.
+
+    Raises
+    ------
+    InputError
+        Per count was asked but the study has no count; or the energy unit cannot be converted to.
+    """
+    description = combined.description
+    asked = description.energy_unit if energy_unit is None else energy_unit
+    conversion = energy_factor(description.energy_unit, asked)
+    unit = {
+        Measure.ENERGY: energy_unit_label(asked),
+        Measure.ENERGY_PER_KELVIN: energy_unit_label(asked, kelvin=True),
+        Measure.NUMBER: "1",
+    }[quantity.measure]
+    factor = conversion if quantity.measure in (Measure.ENERGY, Measure.ENERGY_PER_KELVIN) else 1.0
+    if not per_count or quantity.scaling is Scaling.INTENSIVE:
+        return Presentation(factor=factor, unit=unit, per=None)
+    if description.count is None:
+        raise InputError(
+            "answers per particle need the number of particles; the study declares none. "
+            "Add count (and per, its name) to [system] and combine again."
+        )
+    return Presentation(factor=factor / description.count, unit=unit, per=description.per)

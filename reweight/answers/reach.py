@@ -1,0 +1,183 @@
+"""Reach: the temperatures at which the sampled energies support an answer.
+
+Effective sample size alone does not protect: where 100 were left, intervals of the heat capacity covered 87 % instead
+of 95 %.  Two things do: little probability beyond the last ten independent samples at either end of the sampled
+energies, and enough independent samples that carry the variance of this very answer.  Thresholds were chosen on
+simulated experiments and checked on fresh ones: mean values covered 94-95 % (93 % at the border), the heat capacity
+93-95 % (93 % at the border; at the ends of the range it stays 1-2 points low).
+
+Shape letters: K runs, M keys, Q nodes, T temperatures.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from reweight.density_of_states import DensityOfStates
+from reweight.estimate import Canonical, Estimate
+from reweight.quantities.moments import Moments
+from reweight.quantities.quantity import Quantity
+from reweight.tally.leaves import COUNT
+from reweight.uncertainty.influence import Influence, influence
+
+__all__ = ["Reach", "carriers", "end_mass", "reach", "supported"]
+
+Array = NDArray[np.float64]
+
+LAST_SAMPLES = 10.0
+MOST_END_MASS = {False: 0.08, True: 0.03}  # by whether the quantity measures fluctuations
+FEWEST_CARRIERS = {False: 20.0, True: 30.0}
+
+SEARCH_STEPS = 240
+BISECTIONS = 40
+OUTWARD = 3.0  # how far beyond the simulated temperatures to look, in inverse standard deviations of the energy
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Reach:
+    """Range of temperatures over which a quantity can be answered.
+
+    Attributes
+    ----------
+    lowest, highest : float
+        In the study's temperature unit; ``highest`` may be infinite.  NaN if nothing is in reach.
+    limited_by : tuple of str
+        What ends the range at its cold and at its hot side.
+    """
+
+    lowest: float
+    highest: float
+    limited_by: tuple[str, str]
+
+    @property
+    def empty(self) -> bool:
+        """Nothing is in reach."""
+        return bool(np.isnan(self.lowest))
+
+
+def _end_nodes(estimate: Estimate) -> tuple[NDArray[np.bool_], NDArray[np.bool_]]:
+    """Nodes beyond the last ten independent samples at the low and the high end; whole keys only."""
+    order = estimate.assembly.order
+    by_key = estimate.independent.reshape(-1, order).sum(axis=1)
+    low = np.cumsum(by_key) < LAST_SAMPLES
+    high = np.cumsum(by_key[::-1])[::-1] < LAST_SAMPLES
+    return np.repeat(low, order), np.repeat(high, order)
+
+
+def end_mass(canonical: Canonical) -> Array:
+    """Probability beyond the last ten independent samples at either end of the energies, shape (2, T)."""
+    low, high = _end_nodes(canonical.estimate)
+    weights = canonical.estimate.weights[0]
+    return np.array([(weights[end] @ canonical.weights[end]) for end in (low, high)])
+
+
+def carriers(canonical: Canonical, influences: Influence) -> Array:
+    """Independent samples that carry the variance of an answer, shape (T,).
+
+    ``(sum W I**2)**2 / sum W I**4`` with I the influence minus its mean in each run.  For an observable, whose own
+    fourth moment is not tallied, the influence is replaced by the canonical weight.
+    """
+    estimate = canonical.estimate
+    if set(influences.columns) != {COUNT}:
+        second = estimate.independent @ canonical.weights**2
+        fourth = estimate.independent @ canonical.weights**4
+        return np.divide(second**2, fourth, out=np.zeros_like(second), where=fourth > 0)
+    second = np.zeros_like(canonical.beta)
+    fourth = np.zeros_like(canonical.beta)
+    phi = influences.columns[COUNT]
+    for run, independent in zip(estimate.runs, estimate.independent_shares, strict=True):
+        weights = run.total[0]
+        here = phi[run.index]
+        squared = (here - weights @ here / weights.sum()) ** 2
+        second += independent * (weights @ squared)
+        fourth += independent * (weights @ squared**2)
+    return np.divide(second**2, fourth, out=np.zeros_like(second), where=fourth > 0)
+
+
+def supported(quantity: Quantity, ends: Array, carrying: Array) -> NDArray[np.bool_]:
+    """Whether each answer is within reach, shape (T,)."""
+    return np.asarray(
+        (ends.max(axis=0) <= MOST_END_MASS[quantity.fluctuation])
+        & (carrying >= FEWEST_CARRIERS[quantity.fluctuation])
+    )
+
+
+def reach(combined: DensityOfStates, quantity: Quantity) -> Reach:
+    """Range of temperatures over which a quantity can be answered.
+
+    The longest unbroken stretch, its ends found by bisection; single temperatures inside are still judged one by one.
+    """
+    estimate = combined.estimate
+
+    def judge(beta: Array) -> tuple[NDArray[np.bool_], Array, Array]:
+        canonical = estimate.canonical(beta)
+        ends = end_mass(canonical)
+        carrying = carriers(
+            canonical, influence(quantity, Moments(canonical, combined.description.boltzmann_constant))
+        )
+        return supported(quantity, ends, carrying), ends, carrying
+
+    cold, hot = float(estimate.beta.max()), float(estimate.beta.min())
+    grid = np.unique(
+        np.concatenate(
+            [
+                np.linspace(hot, cold, SEARCH_STEPS),
+                hot - np.linspace(0, OUTWARD / _deviation(estimate, hot), SEARCH_STEPS // 4),
+                cold + np.linspace(0, OUTWARD / _deviation(estimate, cold), SEARCH_STEPS // 4),
+                estimate.beta,
+            ]
+        )
+    )
+    grid = grid[grid >= min(0.0, hot)]
+    if hot > 0:
+        grid = np.concatenate([[0.0], grid]) if grid[0] > 0 else grid
+    inside = judge(grid)[0]
+    if not inside.any():
+        return Reach(lowest=np.nan, highest=np.nan, limited_by=("too few samples", "too few samples"))
+    edges = np.flatnonzero(np.diff(np.concatenate([[False], inside, [False]]).astype(int)))
+    first, stop = max(edges.reshape(-1, 2), key=lambda pair: grid[pair[1] - 1] - grid[pair[0]])
+    low_beta, high_beta = float(grid[first]), float(grid[stop - 1])
+    if first > 0:
+        low_beta = _boundary(lambda b: bool(judge(np.array([b]))[0][0]), low_beta, float(grid[first - 1]))
+    if stop < grid.size:
+        high_beta = _boundary(lambda b: bool(judge(np.array([b]))[0][0]), high_beta, float(grid[stop]))
+    beyond = np.array(
+        [
+            float(grid[stop]) if stop < grid.size else high_beta,
+            float(grid[first - 1]) if first > 0 else low_beta,
+        ]
+    )
+    _, ends, carrying = judge(beyond)
+    limits = tuple(_limit(quantity, ends[:, i], carrying[i], side) for i, side in enumerate(("low", "high")))
+    lowest, highest = combined.description.temperature(np.array([high_beta, low_beta]))
+    return Reach(lowest=float(lowest), highest=float(highest), limited_by=(limits[0], limits[1]))
+
+
+def _deviation(estimate: Estimate, beta: float) -> float:
+    canonical = estimate.canonical(np.array([beta]))
+    variance = float((estimate.weights[0] @ canonical.weighted_power(2))[0])
+    return float(np.sqrt(variance)) if variance > 0 else 1 / estimate.assembly.width
+
+
+def _boundary(inside: Callable[[float], bool], good: float, bad: float) -> float:
+    """Last good value between a good and a bad one, by bisection."""
+    for _ in range(BISECTIONS):
+        middle = (good + bad) / 2
+        if inside(middle):
+            good = middle
+        else:
+            bad = middle
+    return good
+
+
+def _limit(quantity: Quantity, ends: Array, carrying: float, side: str) -> str:
+    if ends.max() > MOST_END_MASS[quantity.fluctuation]:
+        which = "lower" if ends[0] >= ends[1] else "higher"
+        return f"energies {which} than the sampled ones are needed"
+    if carrying < FEWEST_CARRIERS[quantity.fluctuation]:
+        return f"only {carrying:.0f} independent samples carry the answer"
+    return f"nothing sampled beyond the {'coldest' if side == 'low' else 'hottest'} run"

@@ -1,0 +1,253 @@
+"""The combined object: everything needed to answer, check and publish without the raw files.
+
+A run is kept as its tally; what was decided about it (transient, inefficiency, whether it is used) stands beside the
+tally and can be changed without reading a file again.
+"""
+
+from __future__ import annotations
+
+import dataclasses
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from functools import cached_property
+from typing import Any
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
+from reweight import units
+from reweight.errors import InputError
+from reweight.estimate import Estimate
+from reweight.series.correlation import Inefficiency
+from reweight.tally.leaves import COUNT, Column, RunTally, Thinned
+
+__all__ = ["Decision", "DensityOfStates", "Description", "LeftOut", "ObservableDescription", "RunRecord"]
+
+
+@dataclass(frozen=True, kw_only=True)
+class ObservableDescription:
+    """What a recorded column beside the energy is.
+
+    Attributes
+    ----------
+    name, unit : str
+    normalisation : str
+        ``"total"``, ``"per site"`` or ``"plain"``.
+    moments : tuple of int
+        Powers that were tallied.
+    absolute : bool
+        The absolute value was tallied, too.
+    """
+
+    name: str
+    unit: str = "1"
+    normalisation: str = "plain"
+    moments: tuple[int, ...] = (1,)
+    absolute: bool = False
+
+    def columns(self) -> tuple[Column, ...]:
+        """Tallied columns this observable needs."""
+        powers = tuple(Column(self.name, power) for power in sorted({1, *self.moments}))
+        return (*powers, Column(self.name, 1, absolute=True)) if self.absolute else powers
+
+
+@dataclass(frozen=True, kw_only=True)
+class Description:
+    """What was simulated, in which units, and how runs are weighted."""
+
+    title: str = ""
+    energy_unit: str = units.REDUCED
+    temperature_unit: str = units.REDUCED
+    energy_kind: str = "potential"
+    count: int | None = None
+    per: str = "particle"
+    length: float | None = None
+    dimension: int | None = None
+    states: str | None = None
+    ground_degeneracy: int | None = None
+    weighting: str = "independent"
+    resolution: float | None = None
+    observables: tuple[ObservableDescription, ...] = ()
+
+    @property
+    def boltzmann_constant(self) -> float:
+        """k_B in the energy unit per kelvin; 1 in reduced units."""
+        return units.boltzmann_constant(self.energy_unit, self.temperature_unit)
+
+    @property
+    def columns(self) -> tuple[Column, ...]:
+        """All tallied columns: the plain count, then the moments of the observables."""
+        return (COUNT, *(column for each in self.observables for column in each.columns()))
+
+    def inverse_temperature(self, temperature: ArrayLike) -> NDArray[np.float64]:
+        """Inverse temperatures in 1 / energy unit; infinite temperatures give 0.
+
+        Raises
+        ------
+        InputError
+            A temperature is not positive, or not a number.
+        """
+        given = np.asarray(temperature, dtype=float)
+        absolute = np.asarray(units.to_kelvin(given, self.temperature_unit), dtype=float)
+        bad = ~(absolute > 0)
+        if bad.any():
+            raise InputError(
+                f"temperature must be greater than absolute zero; got {np.atleast_1d(given)[np.atleast_1d(bad)][0]:g} "
+                f"{self.temperature_label} ({int(bad.sum())} of {given.size} values)."
+            )
+        with np.errstate(divide="ignore"):
+            return np.asarray(1 / (self.boltzmann_constant * absolute))
+
+    def temperature(self, beta: ArrayLike) -> NDArray[np.float64]:
+        """Temperatures in the study's unit; infinite for an inverse temperature of 0."""
+        with np.errstate(divide="ignore"):
+            absolute = 1 / (self.boltzmann_constant * np.asarray(beta, dtype=float))
+        return np.asarray(absolute - units.to_kelvin(0.0, self.temperature_unit))
+
+    @property
+    def temperature_label(self) -> str:
+        """Unit of temperatures as written on screen; empty in reduced units."""
+        return "" if self.temperature_unit == units.REDUCED else self.temperature_unit
+
+    def as_dict(self) -> dict[str, Any]:
+        """Plain data, for a file."""
+        return dataclasses.asdict(self)
+
+    @classmethod
+    def from_dict(cls, data: Mapping[str, Any]) -> Description:
+        """Inverse of :meth:`as_dict`."""
+        observables = tuple(
+            ObservableDescription(**{**each, "moments": tuple(each["moments"])})
+            for each in data["observables"]
+        )
+        return cls(**{**data, "observables": observables})
+
+
+@dataclass(frozen=True, kw_only=True, eq=False)
+class Decision:
+    """What was decided about a run after it was tallied.
+
+    Attributes
+    ----------
+    discard : int or str
+        As asked: ``"auto"``, rows, or a percentage.
+    transient : int
+        Rows found (or asked) to be left out at the start.
+    first_leaf : int
+        First leaf used: the transient rounded up to a whole leaf.
+    inefficiency : Inefficiency
+        Of the energy after the transient.
+    weight_inefficiency : float
+        The same drawn towards the runs' common value; what samples are divided by.
+    """
+
+    discard: int | str
+    transient: int
+    first_leaf: int
+    inefficiency: Inefficiency
+    weight_inefficiency: float
+
+
+@dataclass(frozen=True, kw_only=True, eq=False)
+class RunRecord:
+    """One run in use.
+
+    Attributes
+    ----------
+    name : str
+    beta : float
+        Inverse temperature, 1 / energy unit.
+    tally : RunTally
+    decision : Decision
+    leaf_rows : numpy.ndarray, shape (B,)
+        Rows in each leaf.
+    thinned : Thinned
+    files : tuple of dict
+        Ledger entries: path, sha256, rows read, first and last energy.
+    """
+
+    name: str
+    beta: float
+    tally: RunTally
+    decision: Decision
+    leaf_rows: NDArray[np.int64]
+    thinned: Thinned
+    files: tuple[dict[str, Any], ...] = ()
+
+    @property
+    def rows(self) -> int:
+        """Rows read."""
+        return self.tally.row_count
+
+    @property
+    def transient_rows(self) -> int:
+        """Rows left out at the start, after rounding up to whole leaves."""
+        return int(self.leaf_rows[: self.decision.first_leaf].sum())
+
+    @property
+    def samples(self) -> int:
+        """Rows used."""
+        return self.rows - self.transient_rows
+
+    @property
+    def independent_samples(self) -> float:
+        """Rows used over the statistical inefficiency."""
+        return self.samples / self.decision.weight_inefficiency
+
+
+@dataclass(frozen=True, kw_only=True)
+class LeftOut:
+    """A run the study leaves out, and why."""
+
+    name: str
+    beta: float
+    reason: str
+
+
+@dataclass(frozen=True, kw_only=True, eq=False)
+class DensityOfStates:
+    """All runs of a study combined into one estimate of the density of states.
+
+    Made by :func:`reweight.combine`, opened again by :func:`reweight.open_combined`; asked by functions such as
+    :func:`reweight.curve`.
+
+    Attributes
+    ----------
+    description : Description
+    runs : tuple of RunRecord, length K
+        In the order of the study.
+    left_out : tuple of LeftOut
+    estimate : Estimate
+        The array side of it.
+    study_text : str
+        The study file, as it was read; empty for runs given as arrays.
+    provenance : dict
+        Version and what else is needed to say how it was made.
+    """
+
+    description: Description
+    runs: tuple[RunRecord, ...]
+    estimate: Estimate
+    left_out: tuple[LeftOut, ...] = ()
+    study_text: str = ""
+    provenance: dict[str, str] = field(default_factory=dict)
+
+    @cached_property
+    def temperatures(self) -> NDArray[np.float64]:
+        """Simulated temperatures, shape (K,), in the study's unit and order."""
+        return self.description.temperature(self.estimate.beta)
+
+    @cached_property
+    def cold_to_hot(self) -> NDArray[np.int64]:
+        """Order of the runs from cold to hot, shape (K,)."""
+        return np.argsort(-self.estimate.beta, kind="stable")
+
+    @cached_property
+    def sharing(self) -> NDArray[np.float64]:
+        """Sharing across the cut above each run but the hottest, cold to hot, in independent samples, shape (K - 1,)."""
+        return self.estimate.sharing[::-1]
+
+    def __repr__(self) -> str:
+        title = f" {self.description.title!r}" if self.description.title else ""
+        samples = sum(run.samples for run in self.runs)
+        return f"<DensityOfStates{title}: {len(self.runs)} runs, {samples} samples>"

@@ -1,0 +1,219 @@
+r"""The multistate estimate as arrays: one density of states from all runs, and canonical averages over it.
+
+Array layer: NumPy and SciPy only; knows nothing of xarray, files or units.
+
+A sample of run i counts ``1 / g_i`` (its statistical inefficiency) everywhere, so that weights are in units of
+independent samples.  With ``D(E)`` from :mod:`reweight.multistate`::
+
+    Z(beta) = sum_q W_q exp(-beta E_q) / D(E_q),       r_q = exp(-beta E_q) / (D(E_q) Z(beta))
+    <A>     = sum_q W^A_q r_q
+
+Shape letters: K runs, C tallied columns, B leaves of a run, Q nodes, q nodes one run has visited, T temperatures.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+from functools import cached_property
+
+import numpy as np
+from numpy.typing import NDArray
+
+from reweight.multistate import (
+    Solution,
+    cut_sharing,
+    hessian,
+    pairwise_start,
+    reference_run,
+    solve,
+    solve_reduced,
+)
+from reweight.tally.assemble import Assembly
+from reweight.tally.leaves import Column
+
+__all__ = ["Canonical", "Estimate", "RunLeaves"]
+
+Array = NDArray[np.float64]
+
+
+@dataclass(frozen=True, slots=True)
+class RunLeaves:
+    """One run's leaves after its transient, weighted.
+
+    Attributes
+    ----------
+    index : numpy.ndarray, shape (q,)
+        Places of the run's nodes among all nodes.
+    weights : numpy.ndarray, shape (C, B, q)
+        In units of independent samples.
+    counts : numpy.ndarray, shape (B,)
+        Independent samples in each leaf.
+    total : numpy.ndarray, shape (C, q)
+        Sum over the leaves.
+    """
+
+    index: NDArray[np.int64]
+    weights: Array
+    counts: Array
+    total: Array
+
+
+@dataclass(frozen=True, eq=False)
+class Estimate:
+    """Combined runs on their nodes.
+
+    Attributes
+    ----------
+    assembly : Assembly
+    columns : tuple of Column, length C
+    beta : numpy.ndarray, shape (K,)
+    runs : tuple of RunLeaves, length K
+    counts : numpy.ndarray, shape (K,)
+        Weight of each run.
+    weights : numpy.ndarray, shape (C, Q)
+    independent : numpy.ndarray, shape (Q,)
+        Plain weights in independent samples; equal to ``weights[0]`` unless all samples were weighted alike.
+    independent_shares : numpy.ndarray, shape (K,)
+        Independent samples per unit of each run's weight; ones unless all samples were weighted alike.
+    solution : Solution
+    """
+
+    assembly: Assembly
+    columns: tuple[Column, ...]
+    beta: Array
+    runs: tuple[RunLeaves, ...]
+    counts: Array
+    weights: Array
+    independent: Array
+    independent_shares: Array
+    solution: Solution
+
+    @classmethod
+    def solved(
+        cls,
+        assembly: Assembly,
+        columns: Sequence[Column],
+        beta: Array,
+        first_leaves: Sequence[int],
+        inefficiencies: Array,
+        weighting: Array,
+        solver: Callable[[Array, Array, Array, Array], Solution],
+    ) -> Estimate:
+        """Weight the runs' leaves and solve for the free energies.
+
+        Parameters
+        ----------
+        first_leaves : sequence of int, length K
+            First leaf after the transient.
+        inefficiencies : numpy.ndarray, shape (K,)
+            Samples per independent sample, as well as they are known.
+        weighting : numpy.ndarray, shape (K,)
+            What a sample's weight is divided by: the inefficiencies, or ones.
+        solver : callable
+            Solution from the weights (K, Q) of each run, their sums (K,), inverse temperatures and node energies.
+        """
+        nodes = assembly.energies.size
+        weights = np.zeros((len(columns), nodes))
+        independent = np.zeros(nodes)
+        per_run = np.zeros((beta.size, nodes))
+        shares = weighting / inefficiencies
+        runs = []
+        for i, run in enumerate(assembly.runs):
+            kept = run.weights[:, first_leaves[i] :] / weighting[i]
+            counts = run.rows[first_leaves[i] :] / weighting[i]
+            total = kept.sum(axis=1)
+            runs.append(RunLeaves(index=run.index, weights=kept, counts=counts, total=total))
+            weights[:, run.index] += total
+            independent[run.index] += total[0] * shares[i]
+            per_run[i, run.index] = total[0]
+        counts = np.array([run.counts.sum() for run in runs])
+        solution = solver(per_run, counts, beta, assembly.energies)
+        return cls(
+            assembly=assembly,
+            columns=tuple(columns),
+            beta=beta,
+            runs=tuple(runs),
+            counts=counts,
+            weights=weights,
+            independent=independent,
+            independent_shares=shares,
+            solution=solution,
+        )
+
+    @property
+    def energies(self) -> Array:
+        """Node energies relative to the reference, shape (Q,)."""
+        return self.assembly.energies
+
+    @cached_property
+    def hessian(self) -> Array:
+        """Information matrix of the free energies, shape (K, K)."""
+        return hessian(self.weights[0], self.solution.probabilities)
+
+    @cached_property
+    def sharing(self) -> Array:
+        """Independent samples' worth of sharing across each cut between neighbouring temperatures, shape (K - 1,)."""
+        return cut_sharing(self.independent, self.solution.probabilities, self.beta)
+
+    def spread(self, right: Array) -> Array:
+        """Solve the information matrix for right-hand sides of shape (K, R); the reference run gets zero."""
+        return solve_reduced(self.hessian, right, reference_run(self.counts))
+
+    def column(self, column: Column) -> Array:
+        """Node weights of a tallied column, shape (Q,)."""
+        return np.asarray(self.weights[self.columns.index(column)])
+
+    def canonical(self, beta: Array) -> Canonical:
+        """Canonical weights at inverse temperatures, shape (T,)."""
+        exponent = -self.solution.log_denominator[:, None] - self.energies[:, None] * beta
+        highest = exponent.max(axis=0)
+        weights = np.exp(exponent - highest)
+        total = self.weights[0] @ weights
+        weights /= total
+        return Canonical(
+            estimate=self,
+            beta=beta,
+            weights=weights,
+            log_partition=np.log(total) + highest,
+            mean_energy=(self.weights[0] * self.energies) @ weights,
+        )
+
+
+@dataclass(frozen=True, eq=False)
+class Canonical:
+    """Canonical weights of the nodes at several temperatures.
+
+    Attributes
+    ----------
+    estimate : Estimate
+    beta : numpy.ndarray, shape (T,)
+    weights : numpy.ndarray, shape (Q, T)
+        ``r``: factor of a node's weight in an average.
+    log_partition : numpy.ndarray, shape (T,)
+        ``ln Z`` for energies relative to the reference, up to the common constant of the free energies.
+    mean_energy : numpy.ndarray, shape (T,)
+        Relative to the reference.
+    """
+
+    estimate: Estimate
+    beta: Array
+    weights: Array
+    log_partition: Array
+    mean_energy: Array
+
+    @cached_property
+    def deviation(self) -> Array:
+        """Energies of the nodes relative to the mean at each temperature, shape (Q, T)."""
+        return np.asarray(self.estimate.energies[:, None] - self.mean_energy)
+
+    def weighted_power(self, power: int) -> Array:
+        """``r (E - <E>)**power`` at the nodes, shape (Q, T)."""
+        weighted = self.weights
+        for _ in range(power):
+            weighted = weighted * self.deviation
+        return weighted
+
+    def effective_sample_size(self) -> Array:
+        """``1 / sum W r**2`` in independent samples, shape (T,) (Kish 1965, with the weights of the mixture)."""
+        return np.asarray(1 / (self.estimate.weights[0] @ self.weights**2))

@@ -1,0 +1,153 @@
+"""Writing outputs so that the old file or the whole new one is there, never a part.
+
+An output is written beside its final name, forced to disk and renamed.  A name is refused before any work
+starts if it could cost data: an existing file (unless asked for), anything that is no plain file, an input.
+"""
+
+from __future__ import annotations
+
+import errno
+import hashlib
+import os
+import secrets
+import stat
+from collections.abc import Iterable, Iterator
+from contextlib import contextmanager
+from pathlib import Path
+
+from reweight.errors import OutputError
+
+__all__ = ["hash_file", "replacing", "write_text"]
+
+_NO_ROOM = {errno.ENOSPC, errno.EDQUOT, errno.EFBIG}
+
+
+@contextmanager
+def replacing(
+    path: str | os.PathLike[str], *, force: bool = False, inputs: Iterable[str | os.PathLike[str]] = ()
+) -> Iterator[Path]:
+    """Write a file completely or not at all.
+
+    Parameters
+    ----------
+    path : path
+        Final name of the output.
+    force : bool, default False
+        Replace an existing plain file.
+    inputs : iterable of path
+        Files that are never replaced, not even with `force`.
+
+    Yields
+    ------
+    pathlib.Path
+        Empty file in the same folder with the same suffix, to be written by the caller.  It takes the final
+        name when the block ends without an exception and is removed otherwise.
+
+    Raises
+    ------
+    OutputError
+        The name cannot be written or must not be replaced, or the disk is full.
+    """
+    target = Path(path)
+    protected = tuple(inputs)
+    _refuse_target(target, force=force, inputs=protected)
+    beside = target.with_name(f".reweight-{secrets.token_hex(6)}{target.suffix}")
+    try:
+        # The mode leaves it to the umask who may read the output, as for any file the user writes.
+        os.close(os.open(beside, os.O_CREAT | os.O_EXCL | os.O_WRONLY, 0o666))
+    except OSError as error:
+        raise OutputError(_not_writable(target, error)) from error
+    try:
+        yield beside
+        _force_to_disk(beside)
+        _refuse_target(target, force=force, inputs=protected)  # something may have appeared meanwhile
+        try:
+            os.replace(beside, target)
+        except OSError as error:
+            raise OutputError(_not_writable(target, error)) from error
+    except BaseException as error:
+        beside.unlink(missing_ok=True)
+        if isinstance(error, OSError) and error.errno in _NO_ROOM:
+            raise OutputError(_not_writable(target, error)) from error
+        raise
+    _force_to_disk(target.parent)
+
+
+def write_text(
+    path: str | os.PathLike[str],
+    text: str,
+    *,
+    force: bool = False,
+    inputs: Iterable[str | os.PathLike[str]] = (),
+) -> None:
+    """Write a text file in UTF-8 completely or not at all; arguments and errors as in :func:`replacing`."""
+    with replacing(path, force=force, inputs=inputs) as beside:
+        beside.write_bytes(text.encode("utf-8"))
+
+
+def hash_file(path: str | os.PathLike[str]) -> str:
+    """SHA-256 of a file's bytes, as 64 hexadecimal digits."""
+    with open(path, "rb") as stream:
+        return hashlib.file_digest(stream, "sha256").hexdigest()
+
+
+def _refuse_target(target: Path, *, force: bool, inputs: Iterable[str | os.PathLike[str]]) -> None:
+    if not target.name:
+        raise OutputError(f"output must be a file name; got {str(target)!r}.")
+    if not target.parent.is_dir():
+        raise OutputError(
+            f"output {str(target)!r} must lie in an existing folder; got {str(target.parent)!r}. "
+            "Create the folder first."
+        )
+    try:
+        mode = os.lstat(target).st_mode
+    except FileNotFoundError:
+        return
+    except OSError as error:
+        raise OutputError(_not_writable(target, error)) from error
+    if not stat.S_ISREG(mode):
+        raise OutputError(
+            f"output {str(target)!r} must be a plain file or a new name; got {_kind(mode)}. "
+            "Choose another name."
+        )
+    for each in inputs:
+        if os.path.exists(each) and os.path.samefile(target, each):
+            raise OutputError(
+                f"output {str(target)!r} must not replace an input; it is the input {os.fspath(each)!r}. "
+                "Choose another name."
+            )
+    if not force:
+        raise OutputError(
+            f"output {str(target)!r} must be a new name; a file of that name exists. "
+            "Choose another name, or ask to replace it (--force, force=True)."
+        )
+
+
+def _kind(mode: int) -> str:
+    kinds = (
+        (stat.S_ISDIR, "a folder"),
+        (stat.S_ISLNK, "a symbolic link"),
+        (stat.S_ISFIFO, "a pipe"),
+        (stat.S_ISSOCK, "a socket"),
+    )
+    return next((name for matches, name in kinds if matches(mode)), "a device")
+
+
+def _not_writable(target: Path, error: OSError) -> str:
+    if error.errno in _NO_ROOM:
+        return (
+            f"output {str(target)!r} needs more room than is left ({error.strerror}); nothing was written. "
+            "Free some space, or write to another disk."
+        )
+    return (
+        f"output {str(target)!r} must be writable; the system says: {error.strerror or error}. "
+        "Choose another name or folder, or change the permissions."
+    )
+
+
+def _force_to_disk(path: Path) -> None:
+    descriptor = os.open(path, os.O_RDONLY)
+    try:
+        os.fsync(descriptor)
+    finally:
+        os.close(descriptor)
