@@ -1,1 +1,49 @@
-"""Histogram reweighting."""
+"""Histogram reweighting: one density of states from canonical runs, every temperature answered with error bars.
+
+>>> import numpy as np, reweight as rw
+>>> rng = np.random.default_rng(7)
+>>> runs = {"cold": rng.gamma(40.0, 1.0, 4000), "hot": rng.gamma(40.0, 1.2, 4000)}
+>>> combined = rw.combine(runs, temperatures=[1.0, 1.2])
+>>> answer = rw.answer(combined, 1.1, of="heat_capacity")
+>>> bool(abs(answer.heat_capacity - 40.0) < 4 * answer.heat_capacity_standard_error)
+True
+"""
+
+from reweight.answers.curve import answer, curve
+from reweight.answers.peak import Peak, peaks
+from reweight.density_of_states import DensityOfStates
+from reweight.errors import (
+    DataFileError,
+    DisconnectedError,
+    InputError,
+    OutOfReachError,
+    ReweightError,
+    StudyError,
+)
+from reweight.runs import read_runs
+from reweight.saving import open_combined, save
+from reweight.studies import combine
+from reweight.study import load_study
+from reweight.version import VERSION
+
+__version__ = VERSION
+
+__all__ = [
+    "DataFileError",
+    "DensityOfStates",
+    "DisconnectedError",
+    "InputError",
+    "OutOfReachError",
+    "Peak",
+    "ReweightError",
+    "StudyError",
+    "__version__",
+    "answer",
+    "combine",
+    "curve",
+    "load_study",
+    "open_combined",
+    "peaks",
+    "read_runs",
+    "save",
+]

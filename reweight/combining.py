@@ -9,9 +9,8 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterator, Sequence
 from concurrent.futures import ThreadPoolExecutor
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from itertools import chain
-from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -20,6 +19,7 @@ from reweight.density_of_states import Decision, DensityOfStates, Description, L
 from reweight.errors import DisconnectedError, InputError, TooShortError
 from reweight.estimate import Estimate
 from reweight.multistate import Solution, cut_sharing, pairwise_start, solution_at, solve
+from reweight.runs import Source
 from reweight.series.correlation import Inefficiency, shrink, statistical_inefficiency
 from reweight.series.transient import transient_length
 from reweight.tally.assemble import Assembly, assemble
@@ -27,7 +27,7 @@ from reweight.tally.leaves import Nodes, RunTally, Thinned
 from reweight.tally.levels import are_levels, find_spacing
 from reweight.tally.panels import panel_width
 
-__all__ = ["Source", "combine_sources", "decide", "estimate_of", "tally_sources", "weighted"]
+__all__ = ["Progress", "combine_sources", "decide", "estimate_of", "tally_sources", "weighted"]
 
 Array = NDArray[np.float64]
 
@@ -36,30 +36,6 @@ FEWEST_ROWS = 10
 WORKERS = 2
 
 Progress = Callable[[str, int], None]
-
-
-@dataclass(frozen=True, kw_only=True)
-class Source:
-    """Where the rows of one run come from.
-
-    Attributes
-    ----------
-    name : str
-    beta : float
-        Inverse temperature, 1 / energy unit.
-    chunks : callable
-        Returns an iterator over arrays (rows, 1 + observables), every number finite.
-    discard : int or str
-        ``"auto"``, rows, or a percentage such as ``"10 %"``.
-    files : list of dict
-        Ledger entries, complete once the chunks are exhausted.
-    """
-
-    name: str
-    beta: float
-    chunks: Callable[[], Iterator[Array]]
-    discard: int | str = "auto"
-    files: Callable[[], tuple[dict[str, Any], ...]] = field(default=tuple)
 
 
 def combine_sources(
@@ -257,8 +233,12 @@ def estimate_of(description: Description, runs: Sequence[RunRecord], assembly: A
     DisconnectedError
         A cut between neighbouring temperatures is crossed by less than one independent sample's worth of energies.
     """
-    shares = np.array([1.0 if description.weighting == "independent" else 1 / inefficiency for inefficiency in (
-        run.decision.weight_inefficiency for run in runs)])
+    shares = np.array(
+        [
+            1.0 if description.weighting == "independent" else 1 / inefficiency
+            for inefficiency in (run.decision.weight_inefficiency for run in runs)
+        ]
+    )
 
     def solver(per_run: Array, counts: Array, beta: Array, energies: Array) -> Solution:
         start = pairwise_start(per_run, counts, beta, energies)

@@ -87,8 +87,8 @@ class Description:
         InputError
             A temperature is not positive, or not a number.
         """
-        given = np.asarray(temperature, dtype=float)
-        absolute = np.asarray(units.to_kelvin(given, self.temperature_unit), dtype=float)
+        given = np.asarray(temperature, dtype=np.float64)
+        absolute = given + units.to_kelvin(0.0, self.temperature_unit)
         bad = ~(absolute > 0)
         if bad.any():
             raise InputError(
@@ -101,7 +101,7 @@ class Description:
     def temperature(self, beta: ArrayLike) -> NDArray[np.float64]:
         """Temperatures in the study's unit; infinite for an inverse temperature of 0."""
         with np.errstate(divide="ignore"):
-            absolute = 1 / (self.boltzmann_constant * np.asarray(beta, dtype=float))
+            absolute = 1 / (self.boltzmann_constant * np.asarray(beta, dtype=np.float64))
         return np.asarray(absolute - units.to_kelvin(0.0, self.temperature_unit))
 
     @property

@@ -24,9 +24,7 @@ from reweight.multistate import (
     Solution,
     cut_sharing,
     hessian,
-    pairwise_start,
     reference_run,
-    solve,
     solve_reduced,
 )
 from reweight.tally.assemble import Assembly

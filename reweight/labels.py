@@ -26,7 +26,9 @@ def per_count_unit(unit: str, per: str | None) -> str:
     return unit if per is None else f"{unit} per {per}"
 
 
-def value_attributes(label: str, long_name: str, unit: str, *, per: str | None, per_kelvin_unit: bool) -> Attributes:
+def value_attributes(
+    label: str, long_name: str, unit: str, *, per: str | None, per_kelvin_unit: bool
+) -> Attributes:
     """Attributes of an answer."""
     attributes = {
         "units": unit,

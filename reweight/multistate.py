@@ -28,6 +28,7 @@ Shape letters: K runs, Q nodes.
 from __future__ import annotations
 
 from dataclasses import dataclass
+from itertools import pairwise
 
 import numpy as np
 from numpy.typing import NDArray
@@ -85,7 +86,7 @@ def pairwise_start(weights: Array, counts: Array, beta: Array, energies: Array) 
     """
     order = np.argsort(beta, kind="stable")
     free = np.zeros(beta.size)
-    for a, b in zip(order[:-1], order[1:], strict=True):
+    for a, b in pairwise(order):
         seen = (weights[a] != 0) | (weights[b] != 0)
         pair, energy = weights[a, seen] + weights[b, seen], energies[seen]
         step = beta[b] - beta[a]

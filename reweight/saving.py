@@ -64,9 +64,12 @@ def save(
     """
     import netCDF4
 
-    with replacing(path, force=force, inputs=inputs) as beside, NETCDF_LOCK:
-        with netCDF4.Dataset(beside, "w", format="NETCDF4") as file:
-            _write(file, combined)
+    with (
+        replacing(path, force=force, inputs=inputs) as beside,
+        NETCDF_LOCK,
+        netCDF4.Dataset(beside, "w", format="NETCDF4") as file,
+    ):
+        _write(file, combined)
 
 
 def _write(file: Any, combined: DensityOfStates) -> None:
@@ -93,7 +96,7 @@ def _write(file: Any, combined: DensityOfStates) -> None:
         tally = run.tally
         group.setncatts(
             {
-                "name": run.name,
+                "run_name": run.name,
                 "beta": run.beta,
                 "files": _json(list(run.files)),
                 "decision": _json(dataclasses.asdict(run.decision)),
@@ -201,7 +204,7 @@ def _read(file: Any, most_bytes: int) -> DensityOfStates:
         loaded.append((group, tally, *tally.complete()))
     records = [
         RunRecord(
-            name=group.name if isinstance(group.name, str) else group.getncattr("name"),
+            name=group.run_name,
             beta=float(group.beta),
             tally=tally,
             decision=_decision(json.loads(group.decision)),

@@ -91,7 +91,9 @@ def curve(
     check_level(level)
     quantities = named([of] if isinstance(of, str) else of)
     if temperature is None:
-        given = temperature_grid(combined, of=[q.name for q in quantities], lowest=lowest, highest=highest, points=points)
+        given = temperature_grid(
+            combined, of=[q.name for q in quantities], lowest=lowest, highest=highest, points=points
+        )
     else:
         given = np.atleast_1d(np.asarray(temperature, dtype=float))
     beta = combined.description.inverse_temperature(given)
@@ -99,14 +101,20 @@ def curve(
     evaluations = evaluate(combined, quantities, beta)
     dataset = xr.Dataset(
         coords={
-            "temperature": ("temperature", given, temperature_attributes(combined.description.temperature_unit)),
+            "temperature": (
+                "temperature",
+                given,
+                temperature_attributes(combined.description.temperature_unit),
+            ),
             "bound": ("bound", np.array(["lower", "upper"])),
         }
     )
     for evaluation, shown in zip(evaluations, expressed, strict=True):
         quantity = evaluation.quantity
         keep = np.full(given.shape, True) if beyond_reach else evaluation.within_reach
-        value, error, half = (np.where(keep, each * shown.factor, np.nan) for each in _numbers(evaluation, level))
+        value, error, half = (
+            np.where(keep, each * shown.factor, np.nan) for each in _numbers(evaluation, level)
+        )
         attributes = value_attributes(
             quantity.label,
             quantity.long_name,
@@ -145,7 +153,11 @@ def curve(
 
 
 def answer(
-    combined: DensityOfStates, temperature: ArrayLike, *, of: str = "heat_capacity", beyond_reach: bool = False
+    combined: DensityOfStates,
+    temperature: ArrayLike,
+    *,
+    of: str = "heat_capacity",
+    beyond_reach: bool = False,
 ) -> xr.Dataset:
     """One quantity at given temperatures, every one of which must be within reach.
 
@@ -173,7 +185,9 @@ def answer(
     outside = ~dataset["within_reach"].to_numpy()
     shown = dataset if np.ndim(temperature) else dataset.isel(temperature=0)
     if outside.any() and not beyond_reach:
-        raise _out_of_reach(combined, dataset["temperature"].to_numpy()[outside], [of], shown, np.size(temperature))
+        raise _out_of_reach(
+            combined, dataset["temperature"].to_numpy()[outside], [of], shown, np.size(temperature)
+        )
     return shown
 
 
@@ -190,7 +204,9 @@ def common_reach(combined: DensityOfStates, of: Sequence[str] = DEFAULT_QUANTITI
     if coldest.empty or hottest.empty or coldest.lowest > hottest.highest:
         return replace(coldest, lowest=np.nan, highest=np.nan)
     return Reach(
-        lowest=coldest.lowest, highest=hottest.highest, limited_by=(coldest.limited_by[0], hottest.limited_by[1])
+        lowest=coldest.lowest,
+        highest=hottest.highest,
+        limited_by=(coldest.limited_by[0], hottest.limited_by[1]),
     )
 
 

@@ -90,7 +90,9 @@ def evaluate(combined: DensityOfStates, quantities: Sequence[Quantity], beta: Ar
             )
     evaluations = []
     for quantity, pieces in zip(quantities, gathered, strict=True):
-        blocks = [np.concatenate([piece[1][i] for piece in pieces], axis=1) for i in range(len(combined.runs))]
+        blocks = [
+            np.concatenate([piece[1][i] for piece in pieces], axis=1) for i in range(len(combined.runs))
+        ]
         ends = np.concatenate([piece[3] for piece in pieces], axis=1)
         carrying = np.concatenate([piece[4] for piece in pieces])
         evaluations.append(

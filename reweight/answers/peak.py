@@ -144,12 +144,19 @@ def peaks(
         edge = place in (0, grid.size - 1)
         beta = float(grid[place]) if edge else _refined(combined, quantity, grid[place - 1], grid[place + 1])
         valley = float(grid[_key_valley(heights, place)])
-        found.append(_peak(combined, quantity, beta, valley, edge, level, shown.factor, shown.unit, shown.per))
+        found.append(
+            _peak(combined, quantity, beta, valley, edge, level, shown.factor, shown.unit, shown.per)
+        )
     return tuple(sorted(found, key=lambda peak: -peak.prominence))
 
 
 def _limits(
-    combined: DensityOfStates, quantity: Quantity, lowest: float | None, highest: float | None, *, beyond_reach: bool
+    combined: DensityOfStates,
+    quantity: Quantity,
+    lowest: float | None,
+    highest: float | None,
+    *,
+    beyond_reach: bool,
 ) -> tuple[float, float]:
     """Inverse temperatures between which to look: the reach, narrowed by what was asked (or replaced by it)."""
     within = reach(combined, quantity)
@@ -224,7 +231,7 @@ def _stencil(combined: DensityOfStates, beta: float) -> tuple[Array, float]:
     canonical = combined.estimate.canonical(np.array([beta]))
     deviation = float(np.sqrt(combined.estimate.weights[0] @ canonical.weighted_power(2))[0])
     step = STEP / deviation
-    return beta + step * np.arange(-4, 5), step
+    return np.asarray(beta + step * np.arange(-4, 5)), step
 
 
 def _refined(combined: DensityOfStates, quantity: Quantity, low: float, high: float) -> float:
@@ -298,13 +305,16 @@ def _peak(
         height_interval=(height - height_half, height + height_half),
         unit=unit,
         per=per,
-        correlation=np.nan if edge else float(correlation([b[:, :2] for b in blocks], spread.windows[:, :2])[0, 1]),
+        correlation=np.nan
+        if edge
+        else float(correlation([b[:, :2] for b in blocks], spread.windows[:, :2])[0, 1]),
         prominence=prominence,
         stands_out=bool(prominence >= STANDS_OUT and not edge),
         at_edge=edge,
         effective_sample_size=float(around.effective_sample_size[middle]),
         within_reach=bool(around.within_reach[middle]),
         variance_share={
-            run.name: (float(spread.shares[i, 0]), float(spread.shares[i, 1])) for i, run in enumerate(combined.runs)
+            run.name: (float(spread.shares[i, 0]), float(spread.shares[i, 1]))
+            for i, run in enumerate(combined.runs)
         },
     )

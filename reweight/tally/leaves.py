@@ -18,6 +18,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -149,7 +150,7 @@ def _doublings(length: int, base: int) -> int:
 
 def _keys(
     energies: NDArray[np.float64], nodes: Nodes
-) -> tuple[NDArray, NDArray[np.int64], NDArray[np.float64]]:
+) -> tuple[NDArray[Any], NDArray[np.int64], NDArray[np.float64]]:
     """Keys present, each row's place among them, and its local coordinate."""
     if nodes.discrete:
         keys, place = np.unique(energies, return_inverse=True)
@@ -338,7 +339,7 @@ class RunTally:
         self._batch = max(BATCH, int(self.leaves.rows[0]))
         if self.nodes.discrete and not are_levels(self.leaves.keys.size, self.row_count):
             self._become_panels()
-        return rows.shape[0]
+        return int(rows.shape[0])
 
     def _become_panels(self) -> None:
         assert self.leaves is not None

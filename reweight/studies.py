@@ -1,0 +1,201 @@
+"""The front door: from a study file, or from runs in memory, to the combined object."""
+
+from __future__ import annotations
+
+import os
+from collections.abc import Mapping
+from typing import TYPE_CHECKING, Any
+
+from numpy.typing import ArrayLike
+
+from reweight.combining import WORKERS, Progress, combine_sources
+from reweight.density_of_states import DensityOfStates, Description, LeftOut, ObservableDescription
+from reweight.errors import InputError
+from reweight.runs import as_tree, file_sources, tree_sources
+from reweight.study import Study, load_study
+from reweight.units import REDUCED
+from reweight.version import VERSION
+
+if TYPE_CHECKING:
+    import xarray as xr
+
+__all__ = ["combine"]
+
+
+def combine(
+    runs: str | os.PathLike[str] | Study | xr.DataTree | xr.DataArray | Mapping[str, Any],
+    *,
+    temperatures: ArrayLike | None = None,
+    energy_unit: str | None = None,
+    temperature_unit: str | None = None,
+    count: int | None = None,
+    per: str = "particle",
+    title: str = "",
+    weighting: str = "independent",
+    discard: int | str = "auto",
+    observables: Mapping[str, Mapping[str, Any]] | None = None,
+    workers: int = WORKERS,
+    progress: Progress | None = None,
+) -> DensityOfStates:
+    """Combine canonical runs into one estimate of the density of states.
+
+    Parameters
+    ----------
+    runs : path, Study, xarray.DataTree, xarray.DataArray, or mapping
+        A study file says everything itself.  Runs in memory: a tree or an array (temperature, sample), or a mapping
+        from run names to energies, shape (N,), or to mappings of columns (``energy`` and observables).
+    temperatures : array_like, shape (K,), optional
+        Of runs given as a mapping; in `temperature_unit`.
+    energy_unit, temperature_unit : str, optional
+        Of runs in memory; ``"reduced"`` (k_B = 1) by default.
+    count : int, optional
+        Number of particles or sites, for answers per count.
+    per, title : str
+    weighting : {"independent", "samples"}
+        Weight samples by statistical inefficiency, or all alike.
+    discard : int or str
+        Start of every run to leave out: ``"auto"``, rows, or a percentage such as ``"10 %"``.
+    observables : mapping, optional
+        What the columns beside the energy are: name to ``unit``, ``is``, ``moments``, ``absolute`` as in a study file.
+        By default every further column is taken as a plain observable.
+    workers : int
+        Runs read at the same time.
+    progress : callable, optional
+        Called with a run's name and the number of rows just tallied.
+
+    Returns
+    -------
+    DensityOfStates
+
+    Raises
+    ------
+    InputError
+        Something about the runs cannot be used; subclasses say what.
+    DisconnectedError
+        Neighbouring groups of runs share no energies.
+
+    Examples
+    --------
+    >>> import numpy as np, reweight as rw
+    >>> rng = np.random.default_rng(1)
+    >>> rw.combine({"cold": rng.gamma(30.0, 1.0, 2000), "hot": rng.gamma(30.0, 1.2, 2000)}, temperatures=[1.0, 1.2])
+    <DensityOfStates: 2 runs, ... samples>
+    """
+    given = (temperatures, energy_unit, temperature_unit, count, observables)
+    if isinstance(runs, (str, os.PathLike, Study)):
+        if any(each is not None for each in given):
+            raise InputError(
+                "a study file says temperatures, units, count and observables itself; they must not be given again."
+            )
+        study = runs if isinstance(runs, Study) else load_study(runs)
+        return _combine_study(study, workers=workers, progress=progress)
+    tree = as_tree(
+        runs,
+        temperatures=temperatures,
+        energy_unit=energy_unit or REDUCED,
+        temperature_unit=temperature_unit or (REDUCED if energy_unit in (None, REDUCED) else "K"),
+    )
+    description = Description(
+        title=title or tree.attrs.get("title", ""),
+        energy_unit=energy_unit or tree.attrs.get("energy_unit", REDUCED),
+        temperature_unit=temperature_unit
+        or tree.attrs.get("temperature_unit", REDUCED if energy_unit in (None, REDUCED) else "K"),
+        count=count if count is not None else tree.attrs.get("count"),
+        per=tree.attrs.get("per", per),
+        weighting=_one_of("weighting", weighting, ("independent", "samples")),
+        observables=_described(tree, observables),
+    )
+    beta = {name: _beta(description, child) for name, child in tree.children.items()}
+    names = tuple(each.name for each in description.observables)
+    return combine_sources(
+        tree_sources(tree, beta, names, discard),
+        description,
+        provenance={"version": VERSION},
+        workers=workers,
+        progress=progress,
+    )
+
+
+def _combine_study(study: Study, *, workers: int, progress: Progress | None) -> DensityOfStates:
+    system = study.system
+    description = Description(
+        title=study.title,
+        energy_unit=study.energy_unit,
+        temperature_unit=study.temperature_unit,
+        energy_kind=study.energy_kind,
+        count=system.count,
+        per=system.per,
+        length=system.length,
+        dimension=system.dimension,
+        states=system.states,
+        ground_degeneracy=system.ground_degeneracy,
+        weighting=study.weighting,
+        resolution=study.resolution,
+        observables=tuple(
+            ObservableDescription(
+                name=name,
+                unit=each.unit,
+                normalisation=each.normalisation,
+                moments=each.moments,
+                absolute=each.absolute,
+            )
+            for name, each in study.observables.items()
+        ),
+    )
+    return combine_sources(
+        file_sources(study),
+        description,
+        left_out=[
+            LeftOut(name=run.name, beta=run.beta(study), reason=run.reason)
+            for run in study.runs
+            if not run.use
+        ],
+        study_text=study.text,
+        provenance={"version": VERSION},
+        workers=workers,
+        progress=progress,
+    )
+
+
+def _one_of(name: str, value: str, allowed: tuple[str, ...]) -> str:
+    if value not in allowed:
+        raise InputError(f"{name} must be one of {', '.join(allowed)}; got {value!r}.")
+    return value
+
+
+def _beta(description: Description, child: xr.DataTree) -> float:
+    if "inverse_temperature" in child.coords:
+        return float(child.coords["inverse_temperature"])
+    if "temperature" not in child.coords:
+        raise InputError(f"every run must have a scalar coordinate temperature; run {child.name!r} has none.")
+    return float(description.inverse_temperature(float(child.coords["temperature"])))
+
+
+def _described(
+    tree: xr.DataTree, observables: Mapping[str, Mapping[str, Any]] | None
+) -> tuple[ObservableDescription, ...]:
+    first = next(iter(tree.children.values()))
+    if observables is None:
+        observables = {str(name): {} for name in first.data_vars if name != "energy"}
+    described = []
+    for name, keys in observables.items():
+        unknown = set(keys) - {"unit", "is", "moments", "absolute"}
+        if unknown:
+            raise InputError(
+                f"observable {name!r} must be described by unit, is, moments, absolute; got {unknown.pop()!r}."
+            )
+        attributes = first[name].attrs if name in first.data_vars else {}
+        described.append(
+            ObservableDescription(
+                name=name,
+                unit=keys.get("unit", attributes.get("units", "1")),
+                normalisation=_one_of(
+                    "is",
+                    keys.get("is", attributes.get("normalisation", "plain")),
+                    ("total", "per site", "plain"),
+                ),
+                moments=tuple(keys.get("moments", (1,))),
+                absolute=bool(keys.get("absolute", False)),
+            )
+        )
+    return tuple(described)

@@ -1,0 +1,6 @@
+"""The study file: what was simulated, in which units, and which files hold the runs."""
+
+from reweight.study.loading import load_study, parse_study
+from reweight.study.schema import Columns, Format, Observable, Run, Study, System
+
+__all__ = ["Columns", "Format", "Observable", "Run", "Study", "System", "load_study", "parse_study"]

@@ -1,0 +1,214 @@
+"""Everything wrong with a study file, in the words of its author: which key, what was found, what to write.
+
+The checks of one value are in the models; here are the checks that need several keys, the list of keys that
+are reserved for later, and the one place where a problem becomes a sentence.
+"""
+
+from __future__ import annotations
+
+import difflib
+import math
+from collections.abc import Iterator, Mapping, Sequence
+from dataclasses import dataclass
+from typing import Any
+
+from pydantic import BaseModel
+from pydantic_core import ErrorDetails
+
+from reweight import units
+from reweight.study.schema import Columns, Conditions, Format, Observable, Run, Study, System
+
+__all__ = ["Problem", "disagreements", "not_built_yet", "translated"]
+
+Location = tuple[str | int, ...]
+
+# Keys that belong to the study file but that nothing uses yet, with the value that asks for nothing.  Whoever
+# builds a feature deletes its row.
+_NOT_BUILT_YET: tuple[tuple[str, object], ...] = (
+    ("conditions.pressure", None),
+    ("conditions.degrees_of_freedom", 0),
+    ("conditions.exchange", False),
+    ("columns.time", None),
+    ("columns.time_unit", None),
+    ("columns.volume", None),
+    ("columns.temperature", None),
+    ("observables.*.above", None),
+    ("observables.*.bins", None),
+    ("report", None),
+)
+
+_MODELS: Mapping[tuple[str, ...], type[BaseModel]] = {
+    (): Study,
+    ("system",): System,
+    ("conditions",): Conditions,
+    ("format",): Format,
+    ("columns",): Columns,
+    ("observables", "*"): Observable,
+    ("run",): Run,
+}
+
+_EXPECTATIONS = {
+    "missing": "must be given",
+    "string_type": "must be a text in quotes",
+    "int_type": "must be a whole number",
+    "float_type": "must be a number",
+    "bool_type": "must be true or false",
+    "literal_error": "must be {expected}",
+    "greater_than": "must be greater than {gt}",
+    "greater_than_equal": "must be at least {ge}",
+    "too_short": "must not be empty",
+    "tuple_type": "must be a list",
+    "dict_type": "must be a table",
+    "model_type": "must be a table",
+}
+
+
+@dataclass(frozen=True, slots=True)
+class Problem:
+    """One thing to be corrected.
+
+    Attributes
+    ----------
+    key : str
+        Path of the key, such as ``run[2].temperature``; runs and list entries are counted from 1.
+    sentence : str
+        The path, the run's name if it has one, what was expected and what was found.
+    """
+
+    key: str
+    sentence: str
+
+
+def not_built_yet(values: Mapping[str, Any]) -> Iterator[Problem]:
+    """Find keys that this version knows but cannot use."""
+    for pattern, harmless in _NOT_BUILT_YET:
+        for location, found in _matches(values, pattern.split(".")):
+            if not (found == harmless and type(found) is type(harmless)):
+                yield _problem(location, "is known but this version cannot use it yet; remove it", values)
+
+
+def translated(details: Sequence[ErrorDetails], values: Mapping[str, Any]) -> Iterator[Problem]:
+    """Put the failed checks of the models into words."""
+    for detail in details:
+        location = detail["loc"]
+        kind = detail["type"]
+        context = detail.get("ctx", {})
+        if kind == "extra_forbidden":
+            text = f"is no key of a study file.{_suggestion(location)}"
+        elif kind == "value_error":
+            text = str(context["error"])
+        elif kind == "missing":
+            text = _EXPECTATIONS[kind]
+        else:
+            expectation = _EXPECTATIONS.get(kind, detail["msg"]).format(**context)
+            text = f"{expectation}; got {_shortened(detail['input'])}"
+        yield _problem(location, text, values)
+
+
+def disagreements(study: Study, values: Mapping[str, Any]) -> Iterator[Problem]:
+    """Find values that are fine alone but not together."""
+    if (study.energy_unit == units.REDUCED) != (study.temperature_unit == units.REDUCED):
+        text = (
+            f'must be "reduced" together with energy_unit or not at all; got {study.temperature_unit!r} '
+            f"with energy_unit = {study.energy_unit!r}"
+        )
+        yield _problem(("temperature_unit",), text, values)
+        return
+    if study.system.energies_are != "total" and study.system.count is None:
+        text = f"must be given, because energies_are = {study.system.energies_are!r} is multiplied by it"
+        yield _problem(("system", "count"), text, values)
+    if study.format.decimal == study.format.delimiter:
+        text = f"must differ from format.decimal; both are {study.format.decimal!r}"
+        yield _problem(("format", "delimiter"), text, values)
+    for name in study.observables:
+        if not (name.isidentifier() and name.isascii()) or name == "energy":
+            text = 'must be named with letters, digits and "_", not beginning with a digit, and not "energy"'
+            yield _problem(("observables", name), text, values)
+    if not study.used_runs:
+        yield _problem(("run",), "must have at least one run with use = true; all are left out", values)
+    first_with_name: dict[str, int] = {}
+    first_with_file: dict[str, int] = {}
+    for index, run in enumerate(study.runs):
+        for key, text in _run_disagreements(run, study):
+            yield _problem(("run", index, key), text, values)
+        if first_with_name.setdefault(run.name, index) != index:
+            text = (
+                f"must be unique; got {run.name!r}, as for run[{first_with_name[run.name] + 1}] "
+                "(a run without a name is called after its first file)"
+            )
+            yield _problem(("run", index, "name"), text, values)
+        for file in run.files:
+            if file in first_with_file:
+                other = first_with_file[file] + 1
+                text = f"must not be read twice; got {file!r}, listed in run[{other}] already"
+                yield _problem(("run", index, "files"), text, values)
+            first_with_file.setdefault(file, index)
+
+
+def _run_disagreements(run: Run, study: Study) -> Iterator[tuple[str, str]]:
+    if (run.temperature is None) == (run.inverse_temperature is None):
+        found = "neither" if run.temperature is None else "both"
+        yield "temperature", f"must be given, or beta instead, but not both; got {found}"
+    elif run.temperature is not None:
+        if not units.to_kelvin(run.temperature, study.temperature_unit) > 0:
+            zero = " (-273.15 degC)" if study.temperature_unit == "degC" else ""
+            yield "temperature", f"must lie above absolute zero{zero}; got {run.temperature}"
+        elif not math.isfinite(run.beta(study)):
+            yield "temperature", f"must be large enough for 1 / (k_B T) to be a number; got {run.temperature}"
+    if not all(file.strip() and file.isprintable() for file in run.files):
+        yield "files", f"must hold names of files; got {list(run.files)!r}"
+    if not run.use and not run.reason.strip():
+        yield "reason", "must say why the run is left out, because use = false; it is printed and archived"
+
+
+def _matches(values: Any, pattern: Sequence[str], above: Location = ()) -> Iterator[tuple[Location, Any]]:
+    if not pattern:
+        yield above, values
+    elif isinstance(values, Mapping):
+        for key in values if pattern[0] == "*" else [pattern[0]]:
+            if key in values:
+                yield from _matches(values[key], pattern[1:], (*above, key))
+
+
+def _problem(location: Location, text: str, values: Mapping[str, Any]) -> Problem:
+    key = ""
+    for part in location:
+        if isinstance(part, int):
+            key += f"[{part + 1}]"
+        elif part != "[key]":
+            key += f".{part}" if key else part
+    end = "" if text.endswith((".", "?")) else "."
+    return Problem(key, f"{key}{_named(location, values)} {text}{end}")
+
+
+def _named(location: Location, values: Mapping[str, Any]) -> str:
+    match location:
+        case ("run", int(index), *_):
+            run = values["run"][index]
+            name = run.get("name") if isinstance(run, Mapping) else None
+            return f" (run {name!r})" if isinstance(name, str) and name else ""
+    return ""
+
+
+def _suggestion(location: Location) -> str:
+    section = tuple(part for part in location[:-1] if isinstance(part, str))
+    if section[:1] == ("observables",):
+        section = ("observables", "*")
+    known = sorted(field.alias or name for name, field in _MODELS[section].model_fields.items())
+    near = difflib.get_close_matches(str(location[-1]), known, n=1)
+    elsewhere = [
+        ".".join((*other, str(location[-1])))
+        for other, model in _MODELS.items()
+        if other != section
+        and location[-1] in {field.alias or name for name, field in model.model_fields.items()}
+    ]
+    if near:
+        return f" Did you mean {near[0]!r}?"
+    if elsewhere:
+        return f" Did you mean {elsewhere[0].replace('*', 'NAME')}?"
+    return f" Known here: {', '.join(known)}"
+
+
+def _shortened(value: object) -> str:
+    text = repr(value)
+    return text if len(text) <= 80 else f"{text[:77]}..."

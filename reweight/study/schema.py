@@ -1,0 +1,222 @@
+"""The study file's keys: what each may hold, and what it means.
+
+One model a table of the TOML.  What a single value may be is said in ``values.py``, how a failed check is put
+into words in ``problems.py``.  Values keep the units of the study file.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+from pathlib import Path, PurePath
+from typing import Annotated, Any, Literal
+
+from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, PrivateAttr, model_validator
+
+from reweight import units
+from reweight.errors import InputError
+from reweight.study.values import (
+    Delimiter,
+    Discard,
+    Encoding,
+    EnergyUnit,
+    Moments,
+    Name,
+    Normalisation,
+    NotNegativeNumber,
+    NumberOfStates,
+    PositiveInteger,
+    PositiveNumber,
+    RunName,
+    SummedColumns,
+    Temperature,
+    TextList,
+    TotalOrPer,
+    Unit,
+    base_and_power,
+    listed,
+)
+
+__all__ = ["Columns", "Conditions", "Format", "Observable", "Run", "Study", "System"]
+
+
+class _Table(BaseModel):
+    model_config = ConfigDict(extra="forbid", frozen=True, strict=True)
+
+
+class System(_Table):
+    """``[system]``: what was simulated."""
+
+    count: PositiveInteger | None = None
+    per: Name = "particle"
+    energies_are: TotalOrPer = "total"
+    length: PositiveNumber | None = None
+    dimension: PositiveInteger | None = None
+    states: NumberOfStates | None = None
+    ground_degeneracy: PositiveInteger | None = None
+
+    @property
+    def log_states(self) -> float | None:
+        """Natural logarithm of the declared number of states; None if none is declared."""
+        if self.states is None:
+            return None
+        base, power = base_and_power(self.states)
+        return power * math.log(base)
+
+    @property
+    def energy_multiplier(self) -> int:
+        """Number by which the files' energies are multiplied to have the energy of the whole system."""
+        return 1 if self.energies_are == "total" or self.count is None else self.count
+
+
+class Conditions(_Table):
+    """``[conditions]``: how it was simulated."""
+
+    pressure: str | None = None
+    degrees_of_freedom: Annotated[int, Field(ge=0)] = 0
+    exchange: bool = False
+
+
+class Format(_Table):
+    """``[format]``: what the look of a text file cannot tell; None means that it is told by the file."""
+
+    delimiter: Delimiter | None = None
+    decimal: Literal[".", ","] = "."
+    comment: TextList | None = None
+    header: bool | None = None
+    encoding: Encoding | None = None
+
+
+class Columns(_Table):
+    """``[columns]``: which columns hold what; several energies are summed."""
+
+    energy: SummedColumns | None = None
+    time: SummedColumns | None = None
+    time_unit: Unit | None = None
+    volume: SummedColumns | None = None
+    temperature: SummedColumns | None = None
+
+
+class Observable(_Table):
+    """``[observables.NAME]``: a quantity recorded beside the energy."""
+
+    column: SummedColumns
+    unit: Unit = "1"
+    normalisation: Normalisation = Field(default="plain", alias="is")
+    moments: Moments = (1,)
+    absolute: bool = False
+    above: float | None = None
+    bins: Annotated[tuple[float, ...], BeforeValidator(listed)] | None = None
+
+
+class Run(_Table):
+    """``[[run]]``: samples of one simulation at one temperature, in one or several files."""
+
+    name: RunName
+    temperature: Temperature | None = None
+    inverse_temperature: NotNegativeNumber | None = Field(default=None, alias="beta")
+    files: Annotated[TextList, Field(min_length=1)]
+    discard: Discard = "auto"
+    use: bool = True
+    reason: str = ""
+
+    @model_validator(mode="before")
+    @classmethod
+    def _name_after_first_file(cls, values: Any) -> Any:
+        if not isinstance(values, Mapping) or "name" in values:
+            return values
+        files = listed(values.get("files"))
+        if not isinstance(files, tuple) or not files or not isinstance(files[0], str):
+            return {**values, "name": "unnamed"}  # the missing files are the problem to be reported
+        return {**values, "name": PurePath(files[0].removesuffix(".gz")).stem}
+
+    def beta(self, study: Study) -> float:
+        """Inverse temperature in 1 / energy unit of the study; 0 for an infinite temperature."""
+        if self.inverse_temperature is not None:
+            return self.inverse_temperature
+        assert self.temperature is not None  # parsing made sure that one of the two is given
+        if math.isinf(self.temperature):
+            return 0.0
+        return 1.0 / (study.boltzmann_constant * units.to_kelvin(self.temperature, study.temperature_unit))
+
+    def discarded_rows(self, rows: int) -> int | None:
+        """Rows to leave out at the beginning of so many; None if the series is to decide.
+
+        Raises
+        ------
+        InputError
+            No row would be left.
+        """
+        if self.discard == "auto":
+            return None
+        discarded = (
+            self.discard
+            if isinstance(self.discard, int)
+            else math.ceil(rows * float(self.discard.strip(" %")) / 100)
+        )
+        if discarded >= rows:
+            raise InputError(
+                f"discard must leave rows over; got {self.discard} of {rows} rows (run {self.name!r}). "
+                "Discard fewer rows, or leave the run out with use = false."
+            )
+        return discarded
+
+
+class Study(_Table):
+    """A whole study file; from :func:`reweight.study.load_study` or :func:`reweight.study.parse_study`."""
+
+    schema_version: Literal[1] = Field(alias="schema")
+    title: str = ""
+    energy_unit: EnergyUnit
+    temperature_unit: Literal["K", "degC", "reduced"]
+    energy_kind: Literal["potential", "total"] = "potential"
+    weighting: Literal["independent", "samples"] = "independent"
+    resolution: PositiveNumber | None = None
+    system: System = System()
+    conditions: Conditions = Conditions()
+    format: Format = Format()
+    columns: Columns = Columns()
+    observables: dict[str, Observable] = {}
+    runs: Annotated[tuple[Run, ...], BeforeValidator(listed), Field(min_length=1)] = Field(alias="run")
+    report: dict[str, Any] = {}
+
+    _text: str = PrivateAttr(default="")
+    _folder: Path = PrivateAttr(default=Path())
+    _path: Path | None = PrivateAttr(default=None)
+
+    @model_validator(mode="before")
+    @classmethod
+    def _temperature_unit_of_energies(cls, values: Any) -> Any:
+        if not isinstance(values, Mapping) or "temperature_unit" in values:
+            return values
+        reduced = values.get("energy_unit") == units.REDUCED
+        return {**values, "temperature_unit": units.REDUCED if reduced else "K"}
+
+    @property
+    def text(self) -> str:
+        """The TOML it was made from."""
+        return self._text
+
+    @property
+    def folder(self) -> Path:
+        """Folder to which the data files' names are relative."""
+        return self._folder
+
+    @property
+    def path(self) -> Path | None:
+        """The study file; None if the study did not come from a file."""
+        return self._path
+
+    @property
+    def boltzmann_constant(self) -> float:
+        """k_B in the study's energy unit per kelvin; 1 in reduced units."""
+        return units.boltzmann_constant(self.energy_unit, self.temperature_unit)
+
+    @property
+    def used_runs(self) -> tuple[Run, ...]:
+        """Runs that are not left out."""
+        return tuple(run for run in self.runs if run.use)
+
+    def data_path(self, file: str) -> Path:
+        """Where a file named in the study lies."""
+        return self.folder / file

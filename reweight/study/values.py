@@ -1,0 +1,190 @@
+"""What a single value of a study file may be, as annotated types for the models in ``schema.py``.
+
+Each check raises a ``ValueError`` whose text continues the name of the key: ``must be ...; got ...``.
+"""
+
+from __future__ import annotations
+
+import codecs
+import math
+import re
+from typing import Annotated, Literal
+
+from pydantic import AfterValidator, BeforeValidator, Field, PlainValidator
+
+from reweight import units
+from reweight.errors import InputError
+
+__all__ = [
+    "Delimiter",
+    "Discard",
+    "Encoding",
+    "EnergyUnit",
+    "Moments",
+    "Name",
+    "Normalisation",
+    "NotNegativeNumber",
+    "NumberOfStates",
+    "PositiveInteger",
+    "PositiveNumber",
+    "RunName",
+    "SummedColumns",
+    "Temperature",
+    "TextList",
+    "TotalOrPer",
+    "Unit",
+    "base_and_power",
+    "listed",
+]
+
+ColumnList = tuple[str | int, ...]
+
+_LARGEST_MOMENT = 8
+
+
+def _columns(value: object) -> ColumnList:
+    """Check a column, or a list of columns to be summed."""
+    entries = value if isinstance(value, list) else [value]
+    for entry in entries:
+        named = isinstance(entry, str) and bool(entry.strip())
+        placed = isinstance(entry, int) and not isinstance(entry, bool) and entry >= 1
+        if not (named or placed):
+            raise ValueError(f"must be a column's name or its position counted from 1; got {entry!r}")
+    if not entries or len(set(entries)) < len(entries):
+        raise ValueError(f"must list each column to be summed once; got {value!r}")
+    return tuple(entries)
+
+
+def listed(value: object) -> object:
+    """Make a tuple of a list and let a single text stand for a list of one."""
+    if isinstance(value, str):
+        return (value,)
+    return tuple(value) if isinstance(value, list) else value
+
+
+def _plain_name(value: str) -> str:
+    if not value.strip() or value != value.strip() or not value.isprintable():
+        raise ValueError(f"must be a printable text that neither begins nor ends with a blank; got {value!r}")
+    return value
+
+
+def _run_name(value: str) -> str:
+    if "/" in value or value in {".", ".."}:
+        raise ValueError(f"must do without '/' (it becomes the name of a group); got {value!r}")
+    return _plain_name(value)
+
+
+def _energy_unit(value: str) -> str:
+    try:
+        units.boltzmann_constant(value, units.REDUCED if value == units.REDUCED else "K")
+    except InputError as error:
+        raise ValueError(str(error).removeprefix("energy unit ")) from None
+    return value
+
+
+def _any_unit(value: str) -> str:
+    try:
+        units.canonical_unit(value)
+    except InputError as error:
+        raise ValueError(str(error).removeprefix("unit ")) from None
+    return value
+
+
+def _states(value: str) -> str:
+    # Two short whole numbers, so nothing has to be evaluated and no power of them is ever formed.
+    if re.fullmatch(r"\s*[0-9]{1,18}\s*\^\s*[0-9]{1,18}\s*", value) is None or min(base_and_power(value)) < 1:
+        raise ValueError(f'must be a number of states written "base^power", like "2^256"; got {value!r}')
+    return value
+
+
+def base_and_power(states: str) -> tuple[int, int]:
+    """Split ``"2^256"`` into its two numbers."""
+    base, power = states.split("^")
+    return int(base), int(power)
+
+
+def _total_or_per(value: str) -> str:
+    if value != "total" and not re.fullmatch(r"per \S.*", value):
+        raise ValueError(f'must be "total" or "per " and a name, like "per atom"; got {value!r}')
+    return value
+
+
+def _normalisation(value: object) -> object:
+    return "per site" if isinstance(value, str) and re.fullmatch(r"per \S.*", value) else value
+
+
+def _discard(value: object) -> str | int:
+    """Check the beginning of a run that is left out: ``"auto"``, a number of rows or a percentage."""
+    if isinstance(value, int) and not isinstance(value, bool) and value >= 0:
+        return value
+    text = value if isinstance(value, str) else ""
+    if text == "auto":
+        return text
+    percentage = re.fullmatch(r"\s*([0-9]+(?:\.[0-9]*)?)\s*%\s*", text)
+    if percentage and float(percentage[1]) < 100:
+        return text
+    if re.fullmatch(r"\s*[0-9.]+\s*[A-Za-zµ]+\s*", text):
+        raise ValueError(
+            f"as a time ({text!r}) is known but this version cannot use it yet; "
+            'give rows (500) or a percentage ("10 %")'
+        )
+    raise ValueError(f'must be "auto", a number of rows or a percentage below 100 like "10 %"; got {value!r}')
+
+
+def _moments(value: object) -> tuple[int, ...]:
+    entries = value if isinstance(value, list) else []
+    if not entries or not all(type(each) is int and 1 <= each <= _LARGEST_MOMENT for each in entries):
+        raise ValueError(f"must be a list of whole numbers from 1 to {_LARGEST_MOMENT}; got {value!r}")
+    return tuple(sorted(set(entries)))
+
+
+def _encoding(value: str) -> str:
+    try:
+        codecs.lookup(value)
+    except LookupError:
+        raise ValueError(f'must be a known encoding like "utf-8" or "latin-1"; got {value!r}') from None
+    return value
+
+
+def _delimiter(value: str) -> str:
+    single = {"tab": "\t", "blanks": " "}.get(value, value)
+    if len(single) != 1 or single.isalnum() or single in '+-."\n\r':
+        raise ValueError(f'must be "blanks", "tab" or one character like ","; got {value!r}')
+    return single
+
+
+def _number_or_infinite(value: float) -> float:
+    if math.isnan(value) or value == -math.inf:
+        raise ValueError(f"must be a number; got {value}")
+    return value
+
+
+def _finite_and_not_negative(value: float) -> float:
+    if not (math.isfinite(value) and value >= 0):
+        raise ValueError(f"must be finite and not negative; got {value}")
+    return value
+
+
+def _finite_and_positive(value: float) -> float:
+    if not (math.isfinite(value) and value > 0):
+        raise ValueError(f"must be finite and greater than 0; got {value}")
+    return value
+
+
+Name = Annotated[str, AfterValidator(_plain_name)]
+RunName = Annotated[str, AfterValidator(_run_name)]
+Unit = Annotated[str, AfterValidator(_any_unit)]
+EnergyUnit = Annotated[str, AfterValidator(_energy_unit)]
+PositiveInteger = Annotated[int, Field(gt=0)]
+PositiveNumber = Annotated[float, AfterValidator(_finite_and_positive)]
+NotNegativeNumber = Annotated[float, AfterValidator(_finite_and_not_negative)]
+Temperature = Annotated[float, AfterValidator(_number_or_infinite)]
+SummedColumns = Annotated[ColumnList, PlainValidator(_columns)]
+TextList = Annotated[tuple[str, ...], BeforeValidator(listed)]
+TotalOrPer = Annotated[str, AfterValidator(_total_or_per)]
+Normalisation = Annotated[Literal["total", "per site", "plain"], BeforeValidator(_normalisation)]
+NumberOfStates = Annotated[str, AfterValidator(_states)]
+Moments = Annotated[tuple[int, ...], PlainValidator(_moments)]
+Discard = Annotated[str | int, PlainValidator(_discard)]
+Encoding = Annotated[str, AfterValidator(_encoding)]
+Delimiter = Annotated[str, AfterValidator(_delimiter)]
