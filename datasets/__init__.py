@@ -33,5 +33,7 @@ def shipped(name: str) -> Path:
         There is no such study.
     """
     if name not in SHIPPED:
-        raise ValueError(f"name must be one of {', '.join(SHIPPED)}; got {name!r}. Choose one of these studies.")
+        raise ValueError(
+            f"name must be one of {', '.join(SHIPPED)}; got {name!r}. Choose one of these studies."
+        )
     return Path(__file__).parent / name.replace("-", "_")

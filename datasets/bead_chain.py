@@ -66,10 +66,12 @@ class BeadChain:
     def potential_energy(self, positions: NDArray[np.float64]) -> NDArray[np.float64]:
         """Energies in kJ/mol, shape (R,), of positions in nm, shape (3, B, R)."""
         first, second = _distant_pairs(self.bead_count)
-        attraction = self._pair_energy(_squared_length(positions[:, first] - positions[:, second])).sum(axis=0)
+        squared_distances = _squared_length(positions[:, first] - positions[:, second])
+        attraction = self._pair_energy(squared_distances).sum(axis=0)
         # two bonds at an angle span a (2 + 2 cos)**0.5
         spans = _squared_length(positions[:, 2:] - positions[:, :-2])
-        return attraction + self.stiffness * (2.0 - 0.5 * spans / self.bond_length**2).sum(axis=0)
+        bending = self.stiffness * (2.0 - 0.5 * spans / self.bond_length**2).sum(axis=0)
+        return np.asarray(attraction + bending)
 
     def _pair_energy(self, squared_distances: NDArray[np.float64]) -> NDArray[np.float64]:
         ratio = self.well_distance**2 / squared_distances
@@ -173,11 +175,13 @@ def _turned(
     sine = 2.0 * half_tangents * scale
     arms = positions[:, start:stop] - anchor[:, None]
     along = axis[0] * arms[0] + axis[1] * arms[1] + axis[2] * arms[2]
-    across = np.stack([
-        axis[1] * arms[2] - axis[2] * arms[1],
-        axis[2] * arms[0] - axis[0] * arms[2],
-        axis[0] * arms[1] - axis[1] * arms[0],
-    ])
+    across = np.stack(
+        [
+            axis[1] * arms[2] - axis[2] * arms[1],
+            axis[2] * arms[0] - axis[0] * arms[2],
+            axis[0] * arms[1] - axis[1] * arms[0],
+        ]
+    )
     turned = positions.copy()
     turned[:, start:stop] = anchor[:, None] + cosine * arms + sine * across + (1.0 - cosine) * along * axis
     return turned
@@ -185,4 +189,4 @@ def _turned(
 
 def _squared_length(vectors: NDArray[np.float64]) -> NDArray[np.float64]:
     """Sum of squares over the leading axis of three; written out, so that its order never depends on a library."""
-    return vectors[0] * vectors[0] + vectors[1] * vectors[1] + vectors[2] * vectors[2]
+    return np.asarray(vectors[0] * vectors[0] + vectors[1] * vectors[1] + vectors[2] * vectors[2])

@@ -65,7 +65,9 @@ def lattice_degeneracies(length: int) -> tuple[int, ...]:
     (2, 0, 32, 64, 424, 1728)
     """
     if length < 3:
-        raise ValueError(f"length must be at least 3 sites; got {length}. Enumerate smaller lattices by hand.")
+        raise ValueError(
+            f"length must be at least 3 sites; got {length}. Enumerate smaller lattices by hand."
+        )
     site_count = length**2
     point_count = site_count + 1
     order = math.lcm(2 * length, 2 * point_count)
@@ -235,7 +237,7 @@ def _degeneracies_modulo(length: int, prime: int, root: int, order: int) -> NDAr
     for degree in range(point_count):
         backward = powers[(-2 * step * degree * rows) % order]
         coefficients[degree] = np.sum(values * backward % prime) % prime
-    return coefficients * pow(point_count, -1, prime) % prime
+    return np.asarray(coefficients * pow(point_count, -1, prime) % prime)
 
 
 def _kaufman_values(
@@ -264,7 +266,7 @@ def _kaufman_values(
         before, now = np.full_like(x, 2), argument
         for _ in range(length - 1):
             before, now = now, (argument * now - b_square * before % prime) % prime
-        return now
+        return np.asarray(now)
 
     def lone_factor(sign: int) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
         """Growing and decaying half of the factor of g_length (sign +1) or g_0 (sign -1)."""

@@ -13,9 +13,8 @@ from functools import cache
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
-from scipy.special import gammaln
-
 from reweight.datasets.exact import Canonical
+from scipy.special import gammaln
 
 __all__ = [
     "FOUR_BY_FOUR_STATES",

@@ -14,11 +14,18 @@ from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
-
 from reweight.datasets.bead_chain import BeadChain, simulate_bead_chain
 from reweight.datasets.square_lattice import simulate_square_lattice
 
-__all__ = ["BEAD_CHAIN", "SQUARE_LATTICE", "Setting", "main", "make_bead_chain", "make_square_lattice", "write_manifest"]
+__all__ = [
+    "BEAD_CHAIN",
+    "SQUARE_LATTICE",
+    "Setting",
+    "main",
+    "make_bead_chain",
+    "make_square_lattice",
+    "write_manifest",
+]
 
 CHAIN = BeadChain()
 LATTICE_LENGTH = 16
@@ -180,13 +187,17 @@ def make_square_lattice(folder: Path, *, setting: Setting = SQUARE_LATTICE) -> l
 
 def write_manifest(folder: Path, entries: list[dict[str, Any]]) -> None:
     """Write ``manifest.json``: each data file with its hash, size, origin, units, script and seed."""
-    (folder / "manifest.json").write_text(json.dumps(entries, indent=1) + "\n", encoding="utf-8", newline="\n")
+    (folder / "manifest.json").write_text(
+        json.dumps(entries, indent=1) + "\n", encoding="utf-8", newline="\n"
+    )
 
 
 def main(arguments: Sequence[str] | None = None) -> None:
     """Remake everything in a folder."""
     parser = argparse.ArgumentParser(prog="python -m reweight.datasets.make", description=__doc__)
-    parser.add_argument("folder", type=Path, help="where to write; made if missing, files of these names replaced")
+    parser.add_argument(
+        "folder", type=Path, help="where to write; made if missing, files of these names replaced"
+    )
     parser.add_argument("--rows", type=int, help="write only this many rows a file (for a quick look)")
     options = parser.parse_args(arguments)
     changes = {} if options.rows is None else {"row_count": options.rows}
@@ -212,15 +223,17 @@ def _write_study(
             f'\n[[run]]\nname = "{setting.run_name.format(temperature)}"\n'
             f'temperature = {temperature}\nfiles = ["{name}"]\n'
         )
-        entries.append({
-            "file": f"{setting.folder}/{name}",
-            "sha256": hashlib.sha256((target / name).read_bytes()).hexdigest(),
-            "rows": len(table),
-            "origin": setting.origin,
-            "units": setting.units,
-            "script": f"{setting.folder}.py",
-            "seed": setting.seed,
-        })
+        entries.append(
+            {
+                "file": f"{setting.folder}/{name}",
+                "sha256": hashlib.sha256((target / name).read_bytes()).hexdigest(),
+                "rows": len(table),
+                "origin": setting.origin,
+                "units": setting.units,
+                "script": f"{setting.folder}.py",
+                "seed": setting.seed,
+            }
+        )
     (target / "study.toml").write_text(study, encoding="utf-8", newline="\n")
     (target / "README.md").write_text(_readme(setting, entries), encoding="utf-8", newline="\n")
     return entries

@@ -64,10 +64,14 @@ def simulate_square_lattice(
         The length is odd or below 4: the colours of the checkerboard would not close around the torus.
     """
     if length < 4 or length % 2:
-        raise ValueError(f"length must be even and at least 4; got {length}. Take a neighbouring even number.")
+        raise ValueError(
+            f"length must be even and at least 4; got {length}. Take a neighbouring even number."
+        )
     scales = 0.5 * np.asarray(temperatures, dtype=np.float64)
     sites = np.arange(length**2).reshape(length, length)
-    neighbours = np.stack([np.roll(sites, shift, axis) for axis in (0, 1) for shift in (1, -1)]).reshape(4, -1)
+    neighbours = np.stack([np.roll(sites, shift, axis) for axis in (0, 1) for shift in (1, -1)]).reshape(
+        4, -1
+    )
     colour = np.add.outer(np.arange(length), np.arange(length)).ravel() % 2
     halves = [np.flatnonzero(colour == parity) for parity in (0, 1)]
     neighbours_of_half = [neighbours[:, half] for half in halves]
@@ -82,7 +86,9 @@ def simulate_square_lattice(
                 fields = spins[first] + spins[second] + spins[third] + spins[fourth]
                 spins[half] = np.where(fields > limits[sweep, parity], np.int8(1), np.int8(-1))
         # one neighbour down and one to the right: every pair once
-        energy[:, row] = -np.sum(spins * (spins[neighbours[0]] + spins[neighbours[2]]), axis=0, dtype=np.int64)
+        energy[:, row] = -np.sum(
+            spins * (spins[neighbours[0]] + spins[neighbours[2]]), axis=0, dtype=np.int64
+        )
         magnetization[:, row] = np.sum(spins, axis=0, dtype=np.int64)
     return LatticeSeries(
         steps=interval * np.arange(1, row_count + 1), energy=energy, magnetization=magnetization

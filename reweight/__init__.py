@@ -9,22 +9,27 @@
 True
 """
 
-from reweight.answers.curve import answer, curve
-from reweight.answers.peak import Peak, peaks
-from reweight.density_of_states import DensityOfStates
-from reweight.errors import (
-    DataFileError,
-    DisconnectedError,
-    InputError,
-    OutOfReachError,
-    ReweightError,
-    StudyError,
-)
-from reweight.runs import read_runs
-from reweight.saving import open_combined, save
-from reweight.studies import combine
-from reweight.study import load_study
+from importlib import import_module
+from typing import TYPE_CHECKING
+
 from reweight.version import VERSION
+
+if TYPE_CHECKING:
+    from reweight.answers.curve import answer, curve
+    from reweight.answers.peak import Peak, peaks
+    from reweight.density_of_states import DensityOfStates
+    from reweight.errors import (
+        DataFileError,
+        DisconnectedError,
+        InputError,
+        OutOfReachError,
+        ReweightError,
+        StudyError,
+    )
+    from reweight.runs import read_runs
+    from reweight.saving import open_combined, save
+    from reweight.studies import combine
+    from reweight.study import load_study
 
 __version__ = VERSION
 
@@ -47,3 +52,35 @@ __all__ = [
     "read_runs",
     "save",
 ]
+
+# Public names are loaded when first used: xarray and SciPy take seconds to import, `reweight --help` must not.
+_HOMES = {
+    "DataFileError": "errors",
+    "DensityOfStates": "density_of_states",
+    "DisconnectedError": "errors",
+    "InputError": "errors",
+    "OutOfReachError": "errors",
+    "Peak": "answers.peak",
+    "ReweightError": "errors",
+    "StudyError": "errors",
+    "answer": "answers.curve",
+    "combine": "studies",
+    "curve": "answers.curve",
+    "load_study": "study",
+    "open_combined": "saving",
+    "peaks": "answers.peak",
+    "read_runs": "runs",
+    "save": "saving",
+}
+
+
+def __getattr__(name: str) -> object:
+    if name not in _HOMES:
+        raise AttributeError(f"module 'reweight' has no attribute {name!r}")
+    value: object = getattr(import_module(f"reweight.{_HOMES[name]}"), name)
+    globals()[name] = value
+    return value
+
+
+def __dir__() -> list[str]:
+    return sorted(__all__)

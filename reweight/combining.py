@@ -11,6 +11,7 @@ from collections.abc import Callable, Iterator, Sequence
 from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
 from itertools import chain
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -35,6 +36,7 @@ FIRST_ROWS = 4096
 FEWEST_ROWS = 10
 WORKERS = 2
 
+# Called with a run's name and the number of rows just tallied; 0 once the run is complete.
 Progress = Callable[[str, int], None]
 
 
@@ -64,7 +66,7 @@ def combine_sources(
             decision=decision,
             leaf_rows=rows,
             thinned=thinned,
-            files=source.files(),
+            files=_accounted(source.files(), int(rows[: decision.first_leaf].sum())),
         )
         for source, tally, (decision, rows, thinned) in zip(sources, tallies, decided.runs, strict=True)
     ]
@@ -76,6 +78,16 @@ def combine_sources(
         study_text=study_text,
         provenance=provenance or {},
     )
+
+
+def _accounted(files: tuple[dict[str, Any], ...], transient: int) -> tuple[dict[str, Any], ...]:
+    """Ledger entries with the transient taken from the first rows kept."""
+    entries = []
+    for entry in files:
+        here = min(transient, entry["kept"])
+        transient -= here
+        entries.append({**entry, "kept": entry["kept"] - here, "transient": here})
+    return tuple(entries)
 
 
 def tally_sources(
@@ -105,6 +117,8 @@ def tally_sources(
             tally.add(rows)
             if progress is not None:
                 progress(source.name, rows.shape[0])
+        if progress is not None:
+            progress(source.name, 0)
         if tally.row_count < FEWEST_ROWS:
             raise TooShortError(
                 f"a run must have at least {FEWEST_ROWS} samples; got {tally.row_count} (run {source.name!r}). "

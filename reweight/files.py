@@ -17,7 +17,7 @@ from pathlib import Path
 
 from reweight.errors import OutputError
 
-__all__ = ["hash_file", "replacing", "write_text"]
+__all__ = ["hash_file", "refuse_target", "replacing", "write_text"]
 
 _NO_ROOM = {errno.ENOSPC, errno.EDQUOT, errno.EFBIG}
 
@@ -50,7 +50,7 @@ def replacing(
     """
     target = Path(path)
     protected = tuple(inputs)
-    _refuse_target(target, force=force, inputs=protected)
+    refuse_target(target, force=force, inputs=protected)
     beside = target.with_name(f".reweight-{secrets.token_hex(6)}{target.suffix}")
     try:
         # The mode leaves it to the umask who may read the output, as for any file the user writes.
@@ -60,7 +60,7 @@ def replacing(
     try:
         yield beside
         _force_to_disk(beside)
-        _refuse_target(target, force=force, inputs=protected)  # something may have appeared meanwhile
+        refuse_target(target, force=force, inputs=protected)  # something may have appeared meanwhile
         try:
             os.replace(beside, target)
         except OSError as error:
@@ -91,7 +91,14 @@ def hash_file(path: str | os.PathLike[str]) -> str:
         return hashlib.file_digest(stream, "sha256").hexdigest()
 
 
-def _refuse_target(target: Path, *, force: bool, inputs: Iterable[str | os.PathLike[str]]) -> None:
+def refuse_target(target: Path, *, force: bool, inputs: Iterable[str | os.PathLike[str]]) -> None:
+    """Refuse a name that must not become an output; for long work, before it starts.
+
+    Raises
+    ------
+    OutputError
+        As from :func:`replacing`.
+    """
     if not target.name:
         raise OutputError(f"output must be a file name; got {str(target)!r}.")
     if not target.parent.is_dir():

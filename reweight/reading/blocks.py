@@ -115,7 +115,7 @@ class LineStream:
         line : int
             Number of the line that comes next, for messages.
         """
-        with self._faults(line):
+        with self._faults():
             data = self._stream.read(size) if size else b""
             if not data.endswith(b"\n"):
                 rest = self._stream.readline(_LONGEST_LINE + 1)
@@ -136,28 +136,26 @@ class LineStream:
         return data
 
     @contextmanager
-    def _faults(self, line: int) -> Iterator[None]:
+    def _faults(self) -> Iterator[None]:
         try:
             yield
         except EOFError as error:
             raise refusal(
-                self._path, "compressed file must be complete; it ends too early. Copy it again.", line=line
+                self._path, "compressed file must be complete; it ends too early. Copy it again."
             ) from error
         except (gzip.BadGzipFile, zlib.error) as error:
             raise refusal(
-                self._path, f"compressed file must be undamaged; got: {error}. Copy it again.", line=line
+                self._path, f"compressed file must be undamaged; got: {error}. Copy it again."
             ) from error
         except UnicodeError as error:
             raise refusal(
-                self._path, f"text must be in the encoding given under [format]; got: {error}.", line=line
+                self._path, f"text must be in the encoding given under [format]; got: {error}."
             ) from error
         except DataFileError:
             raise
         except OSError as error:
             raise refusal(
-                self._path,
-                f"data file must be readable; the system says: {error.strerror or error}.",
-                line=line,
+                self._path, f"data file must be readable; the system says: {error.strerror or error}."
             ) from error
 
 
@@ -179,7 +177,7 @@ def opened(path: Path, encoding: str | None) -> Iterator[LineStream]:
             yield LineStream(path, _Transcoded(stream, encoding), source)
         else:
             lines = LineStream(path, stream, source)
-            with lines._faults(1):
+            with lines._faults():
                 if stream.peek(len(_UNICODE_MARK)).startswith(_UNICODE_MARK):
                     stream.read(len(_UNICODE_MARK))
             yield lines

@@ -15,18 +15,19 @@ import numpy as np
 from numpy.typing import NDArray
 
 from reweight.files import hash_file
+from reweight.reading.classic import is_complete
 from reweight.reading.ledger import FileLedger
 from reweight.reading.source import refusal
 from reweight.study import Format
 
-__all__ = ["NETCDF_MAGICS", "NetcdfTable"]
+__all__ = ["NETCDF_LOCK", "NETCDF_MAGICS", "NetcdfTable"]
 
+NETCDF_LOCK = threading.Lock()
 NETCDF_MAGICS = (b"CDF\x01", b"CDF\x02", b"CDF\x05", b"\x89HDF")
 
 _ROWS_AT_A_TIME = 1 << 16
 _LARGEST_STORED_CHUNK = 1 << 28  # bytes; a file can declare one of terabytes, which would be allocated
 _LARGEST_EXPANSION = 1100  # deflate shrinks at most 1032 times; more is a length that was only declared
-NETCDF_LOCK = threading.Lock()
 
 
 class NetcdfTable:
@@ -46,7 +47,9 @@ class NetcdfTable:
 
     def __init__(self, path: Path, declared: Format) -> None:
         self.path = path
-        with _Opened(path) as dataset:
+        if not is_complete(path):
+            raise refusal(path, "file must be as long as its header says; its end is missing. Copy it again.")
+        with _Opened(path) as dataset, NETCDF_LOCK:
             self._names = tuple(_columns(dataset))
         if not self._names:
             raise refusal(path, "file must hold a numeric variable with one dimension; it has none.")

@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import difflib
 import math
+import posixpath
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
@@ -138,11 +139,12 @@ def disagreements(study: Study, values: Mapping[str, Any]) -> Iterator[Problem]:
             )
             yield _problem(("run", index, "name"), text, values)
         for file in run.files:
-            if file in first_with_file:
-                other = first_with_file[file] + 1
+            same = posixpath.normpath(file)
+            if same in first_with_file:
+                other = first_with_file[same] + 1
                 text = f"must not be read twice; got {file!r}, listed in run[{other}] already"
                 yield _problem(("run", index, "files"), text, values)
-            first_with_file.setdefault(file, index)
+            first_with_file.setdefault(same, index)
 
 
 def _run_disagreements(run: Run, study: Study) -> Iterator[tuple[str, str]]:

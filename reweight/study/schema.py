@@ -16,6 +16,7 @@ from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, PrivateAttr,
 from reweight import units
 from reweight.errors import InputError
 from reweight.study.values import (
+    CommentPrefixes,
     Delimiter,
     Discard,
     Encoding,
@@ -82,7 +83,7 @@ class Format(_Table):
 
     delimiter: Delimiter | None = None
     decimal: Literal[".", ","] = "."
-    comment: TextList | None = None
+    comment: CommentPrefixes | None = None
     header: bool | None = None
     encoding: Encoding | None = None
 

@@ -16,6 +16,7 @@ from reweight import units
 from reweight.errors import InputError
 
 __all__ = [
+    "CommentPrefixes",
     "Delimiter",
     "Discard",
     "Encoding",
@@ -146,6 +147,12 @@ def _encoding(value: str) -> str:
     return value
 
 
+def _comment_prefixes(value: tuple[str, ...]) -> tuple[str, ...]:
+    if not value or not all(each.strip() for each in value):
+        raise ValueError(f'must hold what begins a comment line, like "#"; got {list(value)!r}')
+    return value
+
+
 def _delimiter(value: str) -> str:
     single = {"tab": "\t", "blanks": " "}.get(value, value)
     if len(single) != 1 or single.isalnum() or single in '+-."\n\r':
@@ -183,6 +190,7 @@ SummedColumns = Annotated[ColumnList, PlainValidator(_columns)]
 TextList = Annotated[tuple[str, ...], BeforeValidator(listed)]
 TotalOrPer = Annotated[str, AfterValidator(_total_or_per)]
 Normalisation = Annotated[Literal["total", "per site", "plain"], BeforeValidator(_normalisation)]
+CommentPrefixes = Annotated[TextList, AfterValidator(_comment_prefixes)]
 NumberOfStates = Annotated[str, AfterValidator(_states)]
 Moments = Annotated[tuple[int, ...], PlainValidator(_moments)]
 Discard = Annotated[str | int, PlainValidator(_discard)]

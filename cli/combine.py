@@ -1,0 +1,240 @@
+"""``reweight combine``: from a study to a combined file, and the first screen."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterator
+from contextlib import contextmanager
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import click
+from reweight.cli import options, screen
+from reweight.cli.peak import describe_peak
+
+if TYPE_CHECKING:
+    from reweight.checks.finding import Finding
+    from reweight.density_of_states import DensityOfStates, RunRecord
+
+__all__ = ["combine", "run_combine"]
+
+FEW_RUNS = 4
+MOST_CAUTIONS = 3
+
+
+@click.command(short_help="Combine the runs of a study into one file.")
+@click.argument("study", type=options.plain_path)
+@click.option(
+    "-o", "--output", type=options.plain_path, metavar="FILE", help="[default: the study's name with .nc]"
+)
+@click.option(
+    "--workers", type=click.IntRange(1, 64), default=2, show_default=True, help="Files read at a time."
+)
+@click.option("--json", "as_json", is_flag=True, help="Print JSON in place of the summary.")
+@click.option("--force", is_flag=True, help="Replace the output if it exists.")
+@click.option("--quiet", is_flag=True, help="No progress and no messages beside the summary.")
+def combine(study: Path, output: Path | None, workers: int, as_json: bool, force: bool, quiet: bool) -> None:
+    """Read the runs that STUDY describes, combine them, and write one file that answers every question.
+
+    Ends with status 3 if the runs cannot be trusted: neighbours that hardly share energies, or runs too short
+    against their own correlation.
+    """
+    unsound = run_combine(study, output, workers=workers, as_json=as_json, force=force, quiet=quiet)
+    click.get_current_context().exit(3 if unsound else 0)
+
+
+def run_combine(
+    study: Path, output: Path | None, *, workers: int, as_json: bool, force: bool, quiet: bool
+) -> bool:
+    """Combine, save, print the summary; return whether the runs are unsound."""
+    from reweight.checks.all_checks import findings
+    from reweight.checks.finding import Verdict, worst
+    from reweight.files import refuse_target
+    from reweight.saving import save
+    from reweight.studies import combine as combine_runs
+    from reweight.study import load_study
+
+    described = load_study(study)
+    target = study.with_suffix(".nc") if output is None else output
+    inputs = [study, *(described.data_path(file) for run in described.runs for file in run.files)]
+    refuse_target(target, force=force, inputs=inputs)
+    with _progress(len(described.used_runs), quiet=quiet) as progress:
+        combined = combine_runs(described, workers=workers, progress=progress)
+    save(combined, target, force=force, inputs=inputs)
+    found = findings(combined)
+    if as_json:
+        screen.print_json(_record(combined, found, target))
+    else:
+        _print(combined, found, target)
+    return worst(found) is Verdict.UNSOUND
+
+
+@contextmanager
+def _progress(runs: int, *, quiet: bool) -> Iterator[Callable[[str, int], None] | None]:
+    """Show a bar on a terminal, nothing elsewhere."""
+    from rich.console import Console
+    from rich.progress import BarColumn, MofNCompleteColumn, Progress, TextColumn
+
+    console = Console(stderr=True)
+    if quiet or not console.is_terminal:
+        yield None
+        return
+    columns = (
+        TextColumn("reading runs"),
+        BarColumn(),
+        MofNCompleteColumn(),
+        TextColumn("{task.fields[rows]:,} rows"),
+    )
+    with Progress(*columns, console=console, transient=True) as bar:
+        task = bar.add_task("", total=runs, rows=0)
+        seen = 0
+
+        def advance(run: str, rows: int) -> None:
+            nonlocal seen
+            seen += rows
+            bar.update(task, advance=0 if rows else 1, rows=seen)
+
+        yield advance
+
+
+def _print(combined: DensityOfStates, found: list[Finding], target: Path) -> None:
+    from reweight.checks.finding import Verdict, worst
+
+    description = combined.description
+    unit = description.temperature_label
+    title = description.title or "untitled study"
+    units = f"energies in {description.energy_unit}, temperatures in {unit}" if unit else "reduced units"
+    click.echo(f"{title}: {units}, {description.energy_kind} energies")
+    concerns = sorted(
+        (each for each in found if each.verdict is not Verdict.SOUND), key=lambda each: -each.verdict
+    )
+    shown = _runs_to_show(combined, concerns)
+    if shown:
+        header = ("run", "samples", "transient", "independent", "shared with next hotter")
+        screen.print_table(header, [_row(combined, place) for place in shown], indent=2)
+    if len(shown) < len(combined.runs):
+        click.echo(_in_short(combined, "the others: " if shown else ""))
+    click.echo(_account(combined))
+    for line in _headline(combined):
+        click.echo(line)
+    for each in concerns[:MOST_CAUTIONS]:
+        click.echo(f"{each.verdict}: {each.summary}; {each.advice}")
+    if len(concerns) > MOST_CAUTIONS:
+        click.echo(f"and {screen.counted(len(concerns) - MOST_CAUTIONS, 'more finding')}; --json lists all")
+    size = target.stat().st_size
+    click.echo(
+        f"{worst(found)}; wrote {target} ({size / 1e6:.2g} MB); next: reweight curve {target} --plot curve.png"
+    )
+
+
+def _runs_to_show(combined: DensityOfStates, concerns: list[Finding]) -> list[int]:
+    """Places of the runs worth a line, cold to hot: all if few, otherwise those a finding is about."""
+    order = [int(place) for place in combined.cold_to_hot]
+    if len(order) <= FEW_RUNS:
+        return order
+    named = {name for each in concerns for name in each.offender.split(" - ")}
+    return [place for place in order if combined.runs[place].name in named]
+
+
+def _one_in(run: RunRecord) -> str:
+    from reweight.notation import bracket
+
+    found = run.decision.inefficiency
+    if found.constant:
+        return "constant"
+    if found.value <= 1:
+        return "all"
+    return f"one in {bracket(found.value, found.standard_error, digits=1)}"
+
+
+def _row(combined: DensityOfStates, place: int) -> tuple[str, ...]:
+    run = combined.runs[place]
+    rank = list(combined.cold_to_hot).index(place)
+    shared = f"{combined.sharing[rank]:,.3g}" if rank < len(combined.sharing) else ""
+    return (run.name, f"{run.samples:,}", f"{run.transient_rows:,}", _one_in(run), shared)
+
+
+def _in_short(combined: DensityOfStates, prefix: str) -> str:
+    slowest = max(combined.runs, key=lambda run: run.decision.inefficiency.value)
+    fewest = min(combined.runs, key=lambda run: run.independent_samples)
+    text = (
+        f"{prefix}{screen.counted(len(combined.runs), 'run')}; slowest {slowest.name}, {_one_in(slowest)} independent; "
+        f"shortest {fewest.name}, {fewest.independent_samples:,.0f} independent samples"
+    )
+    if len(combined.sharing):
+        place = int(combined.sharing.argmin())
+        cold, hot = (combined.runs[combined.cold_to_hot[place + step]].name for step in (0, 1))
+        text += f"; weakest link {cold} - {hot}, {combined.sharing[place]:,.3g} shared"
+    return text
+
+
+def _account(combined: DensityOfStates) -> str:
+    files = [entry for run in combined.runs for entry in run.files]
+    kept, transient, replaced, dropped = (
+        sum(entry[part] for entry in files) for part in ("kept", "transient", "replaced", "dropped")
+    )
+    read = sum(entry["rows_read"] for entry in files)
+    text = f"{screen.counted(read, 'row')} read from {screen.counted(len(files), 'file')}"
+    text += f": {kept:,} kept, {transient:,} transient"
+    text += f", {replaced:,} replaced, {dropped:,} dropped" if replaced or dropped else ", none dropped"
+    for each in combined.left_out:
+        text += f"\nleft out: {each.name} ({each.reason})"
+    spacings = {run.tally.nodes.spacing for run in combined.runs} - {None}
+    for spacing in spacings:
+        assert spacing is not None
+        text += (
+            f"\nenergies were rounded in the files; moved to multiples of {spacing.step:g} from {spacing.offset:g} "
+            f"(by at most {spacing.largest_shift:.2g})"
+        )
+    return text
+
+
+def _headline(combined: DensityOfStates) -> list[str]:
+    """Lines with the reach and the peak of the heat capacity."""
+    from reweight.answers.curve import common_reach
+    from reweight.answers.peak import peaks
+    from reweight.errors import OutOfReachError
+
+    within = common_reach(combined)
+    unit = combined.description.temperature_label
+    if within.empty:
+        return [f"these runs support no answers yet: {within.limited_by[0]}"]
+    lines = [f"these runs support answers from {within.lowest:.5g} to {within.highest:.5g} {unit}".rstrip()]
+    try:
+        best = peaks(combined)[0]
+    except OutOfReachError as error:
+        return [*lines, str(error)]
+    return lines + describe_peak(combined, best, 0.95)[:2]
+
+
+def _record(combined: DensityOfStates, found: list[Finding], target: Path) -> dict[str, Any]:
+    import dataclasses
+
+    runs = [
+        {
+            "name": run.name,
+            "temperature": float(combined.temperatures[place]),
+            "beta": run.beta,
+            "rows": run.rows,
+            "transient": run.transient_rows,
+            "samples": run.samples,
+            "statistical_inefficiency": run.decision.inefficiency.value,
+            "statistical_inefficiency_standard_error": run.decision.inefficiency.standard_error,
+            "independent_samples": run.independent_samples,
+            "files": list(run.files),
+        }
+        for place, run in enumerate(combined.runs)
+    ]
+    return screen.envelope(
+        combined,
+        "combine",
+        level=None,
+        units={
+            "energy": combined.description.energy_unit,
+            "temperature": combined.description.temperature_unit,
+        },
+        file=str(target),
+        runs=runs,
+        left_out=[dataclasses.asdict(each) for each in combined.left_out],
+        sharing=combined.sharing,
+        findings=[{**dataclasses.asdict(each), "verdict": str(each.verdict)} for each in found],
+    )

@@ -1,0 +1,160 @@
+"""``reweight curve``: quantities against temperature."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import click
+from reweight.cli import options, screen
+
+if TYPE_CHECKING:
+    import xarray as xr
+
+__all__ = ["curve"]
+
+
+@click.command(short_help="Mean energy, heat capacity and more against temperature.")
+@click.argument("file", type=options.plain_path)
+@click.option(
+    "--of", multiple=True, metavar="NAME", help="Quantity; repeatable; 'list' shows what can be asked."
+)
+@options.at_options
+@options.range_options
+@options.question_options
+@options.output_options
+def curve(
+    file: Path,
+    of: tuple[str, ...],
+    at: tuple[tuple[float, ...], ...],
+    points: int | None,
+    lowest: float | None,
+    highest: float | None,
+    per_count: bool,
+    energy_unit: str | None,
+    level: float,
+    errors: str,
+    beyond_reach: bool,
+    csv: Path | None,
+    plot: Path | None,
+    as_json: bool,
+    force: bool,
+    quiet: bool,
+) -> None:
+    """Answer quantities at temperatures that need not have been simulated.
+
+    FILE is a combined file.  Without --at, 101 temperatures across the reach of the runs.  Values are printed with
+    the standard error of their last digits in brackets; rows out of reach stay empty.
+    """
+    from reweight.answers.curve import DEFAULT_POINTS, DEFAULT_QUANTITIES
+    from reweight.answers.curve import curve as ask
+    from reweight.quantities.catalogue import available
+
+    combined = screen.opened(file, quiet=quiet)
+    if "list" in of:
+        screen.print_table(("name", "what"), [(each.name, each.long_name) for each in available().values()])
+        return
+    if at and (points is not None or lowest is not None or highest is not None):
+        raise click.UsageError(
+            "--at names single temperatures; it does not go with --from, --to or --points."
+        )
+    temperatures = [t for group in at for t in group] or None
+    unit = combined.description.temperature_label
+    if temperatures is not None:
+        screen.message(f"at {', '.join(f'{t:g}' for t in temperatures)} {unit}".rstrip(), quiet=quiet)
+    dataset = ask(
+        combined,
+        temperatures,
+        of=of or DEFAULT_QUANTITIES,
+        lowest=lowest,
+        highest=highest,
+        points=DEFAULT_POINTS if points is None else points,
+        level=level,
+        per_count=per_count,
+        energy_unit=energy_unit,
+        beyond_reach=beyond_reach,
+    )
+    if csv is not None:
+        header, rows = _numbers(dataset)
+        screen.write_csv(csv, header, rows, force=force, inputs=[file])
+    if plot is not None:
+        from reweight.figures.curves import curve_figure
+        from reweight.figures.style import save_figure
+
+        save_figure(curve_figure(combined, dataset), plot, force=force, inputs=[file])
+    if as_json:
+        screen.print_json(screen.envelope(combined, "curve", level=level, **_content(dataset)))
+    else:
+        _print(dataset)
+    outside = int((~dataset["within_reach"]).sum())
+    if outside:
+        what = "answered beyond the reach" if beyond_reach else "out of reach and left empty"
+        screen.message(
+            f"{outside} of {screen.counted(dataset.sizes['temperature'], 'temperature')} {what} "
+            "for at least one quantity"
+            + ("" if beyond_reach else "; --beyond-reach shows unsupported estimates"),
+            quiet=quiet,
+        )
+
+
+def _labels(dataset: xr.Dataset) -> list[str]:
+    return [str(name) for name in dataset.data_vars if f"{name}_interval" in dataset]
+
+
+def _content(dataset: xr.Dataset) -> dict[str, Any]:
+    labels = _labels(dataset)
+    names = ["temperature", *labels]
+    content: dict[str, Any] = {"units": {name: dataset[name].attrs["units"] for name in names}}
+    content["temperature"] = dataset["temperature"].to_numpy()
+    for label in labels:
+        for part in (label, f"{label}_standard_error", f"{label}_interval", f"{label}_within_reach"):
+            content[part] = dataset[part].to_numpy()
+    for name in ("effective_sample_size", "within_reach"):
+        content[name] = dataset[name].to_numpy()
+    return content
+
+
+def _numbers(dataset: xr.Dataset) -> tuple[list[str], list[list[Any]]]:
+    header, columns = (
+        [f"temperature [{dataset['temperature'].attrs['units']}]"],
+        [dataset["temperature"].to_numpy()],
+    )
+    for label in _labels(dataset):
+        unit = dataset[label].attrs["units"]
+        interval = dataset[f"{label}_interval"].to_numpy()
+        header += [f"{label}{part} [{unit}]" for part in ("", "_standard_error", "_lower", "_upper")]
+        columns += [
+            dataset[label].to_numpy(),
+            dataset[f"{label}_standard_error"].to_numpy(),
+            interval[:, 0],
+            interval[:, 1],
+        ]
+    header += ["effective_sample_size [1]", "within_reach"]
+    columns += [dataset["effective_sample_size"].to_numpy(), dataset["within_reach"].to_numpy()]
+    return header, [[each.item() for each in row] for row in zip(*columns, strict=True)]
+
+
+def _print(dataset: xr.Dataset) -> None:
+    from reweight.notation import bracket, quantity_text
+
+    labels = _labels(dataset)
+    titles = [
+        quantity_text(f"{dataset[label].attrs['long_name']}", "") + _in(dataset[label].attrs["units"])
+        for label in labels
+    ]
+    rows = []
+    for place, temperature in enumerate(dataset["temperature"].to_numpy()):
+        cells = [f"{temperature:.6g}"]
+        for label in labels:
+            value = float(dataset[label][place])
+            error = float(dataset[f"{label}_standard_error"][place])
+            mark = "" if bool(dataset[f"{label}_within_reach"][place]) else " !"
+            cells.append("-" if value != value else bracket(value, error) + mark)
+        cells.append(f"{float(dataset['effective_sample_size'][place]):.0f}")
+        rows.append(cells)
+    temperature_title = "temperature" + _in(dataset["temperature"].attrs["units"])
+    screen.print_table((temperature_title, *titles, "effective samples"), rows)
+
+
+def _in(unit: str) -> str:
+    return "" if unit == "1" else f" [{unit}]"

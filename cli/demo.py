@@ -1,0 +1,56 @@
+"""``reweight demo``: the whole job on shipped data."""
+
+from __future__ import annotations
+
+import shutil
+from pathlib import Path
+
+import click
+from reweight.cli import options
+from reweight.cli.combine import run_combine
+
+__all__ = ["demo"]
+
+
+@click.command(short_help="Copy example runs into a folder and do the whole job on them.")
+@click.argument("folder", type=options.plain_path, default="reweight-demo")
+def demo(folder: Path) -> None:
+    """Copy the shipped studies into FOLDER, combine one of them, draw its curves, and say what to try next.
+
+    FOLDER must not exist yet.  The runs were made by simulators of our own: a chain of beads that collapses on
+    cooling, and a square lattice of two-state sites whose answers are known exactly.
+    """
+    from reweight.datasets import SHIPPED, shipped
+
+    from reweight.answers.curve import curve
+    from reweight.answers.peak import peaks
+    from reweight.errors import OutputError
+    from reweight.figures.curves import curve_figure
+    from reweight.figures.style import save_figure
+    from reweight.saving import open_combined
+
+    try:
+        folder.mkdir(parents=True)
+    except FileExistsError:
+        raise OutputError(
+            f"the demo needs a new folder; {str(folder)!r} exists. Name another: reweight demo NAME"
+        ) from None
+    except OSError as error:
+        raise OutputError(
+            f"the folder {str(folder)!r} cannot be made; the system says: {error.strerror}."
+        ) from error
+    for name in SHIPPED:
+        shutil.copytree(shipped(name), folder / name)
+    chain = folder / "bead-chain"
+    click.echo(f"copied {', '.join(SHIPPED)} to {folder}; combining {chain / 'study.toml'}:\n")
+    run_combine(chain / "study.toml", None, workers=2, as_json=False, force=False, quiet=False)
+    combined = open_combined(chain / "study.nc")
+    picture = chain / "curves.png"
+    save_figure(curve_figure(combined, curve(combined), peaks(combined)[:1]), picture)
+    temperature = combined.temperatures.mean()
+    click.echo(
+        f"\ndrew {picture}\n\ntry next:\n"
+        f"  reweight curve {chain / 'study.nc'} --at {temperature:.0f} --per-count\n"
+        f"  reweight peak {chain / 'study.nc'} --json\n"
+        f"  reweight combine {folder / 'square-lattice' / 'study.toml'}   (its exact peak: T = 2.3175, C/N = 1.5522)"
+    )

@@ -1,0 +1,119 @@
+"""``reweight peak``: where a quantity is largest."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import click
+from reweight.cli import options, screen
+
+if TYPE_CHECKING:
+    from reweight.answers.peak import Peak
+    from reweight.density_of_states import DensityOfStates
+
+__all__ = ["describe_peak", "peak"]
+
+
+@click.command(short_help="Position and height of the heat-capacity peak, or of any other.")
+@click.argument("file", type=options.plain_path)
+@click.option("--of", default="heat_capacity", show_default=True, metavar="NAME", help="Quantity.")
+@options.range_options
+@options.question_options
+@options.output_options
+def peak(
+    file: Path,
+    of: str,
+    lowest: float | None,
+    highest: float | None,
+    per_count: bool,
+    energy_unit: str | None,
+    level: float,
+    errors: str,
+    beyond_reach: bool,
+    csv: Path | None,
+    plot: Path | None,
+    as_json: bool,
+    force: bool,
+    quiet: bool,
+) -> None:
+    """Find the maxima of a quantity, refined below any grid, with error bars of position and height.
+
+    FILE is a combined file.  A maximum that does not stand out from its noise is said not to.
+    """
+    from reweight.answers.peak import peaks
+
+    combined = screen.opened(file, quiet=quiet)
+    asked = {"per_count": per_count, "energy_unit": energy_unit, "level": level, "beyond_reach": beyond_reach}
+    found = peaks(combined, of=of, lowest=lowest, highest=highest, **asked)  # type: ignore[arg-type]
+    if csv is not None:
+        header = list(_record(found[0]))
+        screen.write_csv(csv, header, [list(_flat(each)) for each in found], force=force, inputs=[file])
+    if plot is not None:
+        from reweight.answers.curve import curve
+        from reweight.figures.curves import curve_figure
+        from reweight.figures.style import save_figure
+
+        dataset = curve(combined, of=of, lowest=lowest, highest=highest, **asked)  # type: ignore[arg-type]
+        marked = [each for each in found if each.stands_out]
+        save_figure(curve_figure(combined, dataset, marked), plot, force=force, inputs=[file])
+    if as_json:
+        units = {"temperature": combined.description.temperature_label or "1", "height": found[0].unit}
+        records = [_record(each) for each in found]
+        screen.print_json(screen.envelope(combined, "peak", level=level, units=units, peaks=records))
+    else:
+        _print(combined, found, level)
+
+
+def _record(found: Peak) -> dict[str, Any]:
+    import dataclasses
+
+    return dataclasses.asdict(found)
+
+
+def _flat(found: Peak) -> list[Any]:
+    return [" ".join(map(repr, v)) if isinstance(v, tuple) else v for v in _record(found).values()]
+
+
+def _print(combined: DensityOfStates, found: tuple[Peak, ...], level: float) -> None:
+    standing = [each for each in found if each.stands_out]
+    for each in standing or found[:1]:
+        for line in describe_peak(combined, each, level):
+            click.echo(line)
+    rest = len(found) - len(standing) if standing else len(found) - 1
+    if rest:
+        click.echo(
+            f"{screen.counted(rest, 'further maximum')} within the noise; --json lists all".replace(
+                "maximums", "maxima"
+            )
+        )
+
+
+def describe_peak(combined: DensityOfStates, found: Peak, level: float) -> list[str]:
+    """Lines that say where a peak is, how high, and how far it stands out."""
+    from reweight.notation import bracket, quantity_text
+
+    unit = combined.description.temperature_label
+    name = found.of.replace("_", " ") + (f" per {found.per}" if found.per else "")
+    height = quantity_text(bracket(found.height, found.height_standard_error), found.unit)
+    if found.at_edge:
+        at = quantity_text(f"{found.temperature:.6g}", unit)
+        return [
+            f"{name}: no maximum inside the searched range; it is largest at its edge, {at}, with {height}",
+            "the real peak, if there is one, lies beyond: add runs there",
+        ]
+    at = quantity_text(bracket(found.temperature, found.temperature_standard_error), unit)
+    if not found.stands_out:
+        return [
+            f"{name}: none stands out; the highest, at {at} with {height}, rises {found.prominence:.1f} standard errors "
+            "above the valley beside it",
+        ]
+    low, high = found.temperature_interval
+    bottom, top = found.height_interval
+    span = f"{100 * level:g} % interval"
+    return [
+        f"{name} peaks at {at}, {span} {low:.6g} to {high:.6g}",
+        f"  height {height}, {span} {bottom:.5g} to {top:.5g}",
+        f"  correlation of the two errors {found.correlation:+.2f}; stands {found.prominence:.3g} standard errors "
+        "above the valley beside it",
+    ]

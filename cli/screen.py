@@ -1,0 +1,117 @@
+"""What is printed: tables for people, JSON and CSV for machines, messages on the error stream."""
+
+from __future__ import annotations
+
+import csv
+import io
+import json
+import math
+from collections.abc import Iterable, Mapping, Sequence
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import click
+
+from reweight.files import write_text
+
+if TYPE_CHECKING:
+    from reweight.density_of_states import DensityOfStates
+
+__all__ = ["counted", "envelope", "message", "opened", "plain", "print_json", "print_table", "write_csv"]
+
+
+def message(text: str, *, quiet: bool = False) -> None:
+    """Tell something that is not the answer."""
+    if not quiet:
+        click.echo(text, err=True)
+
+
+def counted(number: int, noun: str) -> str:
+    """Number and noun, with thousands parted and the plural where it belongs.
+
+    Examples
+    --------
+    >>> counted(1, "run"), counted(20000, "row")
+    ('1 run', '20,000 rows')
+    """
+    return f"{number:,} {noun}{'' if number == 1 else 's'}"
+
+
+def print_table(header: Sequence[str], rows: Iterable[Sequence[str]], *, indent: int = 0) -> None:
+    """Print columns under their headings, numbers to the right."""
+    lines = [list(header), *(list(row) for row in rows)]
+    widths = [max(len(line[column]) for line in lines) for column in range(len(header))]
+    for line in lines:
+        cells = [
+            cell.ljust(width) if column == 0 else cell.rjust(width)
+            for column, (cell, width) in enumerate(zip(line, widths, strict=True))
+        ]
+        click.echo((" " * indent + "  ".join(cells)).rstrip())
+
+
+def plain(value: Any) -> Any:
+    """Value as JSON holds it: null for what is not finite, lists for arrays."""
+    if isinstance(value, Mapping):
+        return {str(key): plain(each) for key, each in value.items()}
+    if hasattr(value, "tolist"):
+        value = value.tolist()
+    if isinstance(value, (list, tuple)):
+        return [plain(each) for each in value]
+    if isinstance(value, float) and not math.isfinite(value):
+        return None
+    return value
+
+
+def envelope(combined: DensityOfStates, form: str, *, level: float | None, **content: Any) -> dict[str, Any]:
+    """Wrap an answer in what every JSON answer carries."""
+    from reweight.checks.all_checks import findings
+    from reweight.checks.finding import worst
+
+    return {
+        "form": f"reweight {form} 1",
+        "title": combined.description.title,
+        "level": level,
+        "errors": "linear",
+        "seed": None,
+        "verdict": str(worst(findings(combined))),
+        **content,
+    }
+
+
+def print_json(content: Mapping[str, Any]) -> None:
+    """Print one JSON object."""
+    click.echo(json.dumps(plain(content), indent=1, ensure_ascii=False, allow_nan=False))
+
+
+def write_csv(
+    path: Path, header: Sequence[str], rows: Iterable[Sequence[Any]], *, force: bool, inputs: Iterable[Path]
+) -> None:
+    """Write a table with all digits; empty cells for what is not finite, labels made inert for spreadsheets."""
+    text = io.StringIO()
+    writer = csv.writer(text, lineterminator="\n")
+    writer.writerow([_cell(each) for each in header])
+    writer.writerows([[_cell(each) for each in row] for row in rows])
+    write_text(path, text.getvalue(), force=force, inputs=inputs)
+
+
+def _cell(value: Any) -> str:
+    if isinstance(value, bool):
+        return "true" if value else "false"
+    if isinstance(value, float):
+        return repr(value) if math.isfinite(value) else ""
+    text = str(value)
+    return f"'{text}" if text[:1] in ("=", "+", "-", "@") else text
+
+
+def opened(path: Path, *, quiet: bool) -> DensityOfStates:
+    """Open a combined file; say so once if its runs are not sound."""
+    from reweight.checks.all_checks import findings
+    from reweight.checks.finding import Verdict
+    from reweight.saving import open_combined
+
+    combined = open_combined(path)
+    unsound = [finding for finding in findings(combined) if finding.verdict is Verdict.UNSOUND]
+    if unsound:
+        more = f" and {counted(len(unsound) - 1, 'more finding')}" if len(unsound) > 1 else ""
+        message(f"unsound: {unsound[0].summary}{more}; {unsound[0].advice}", quiet=quiet)
+    return combined

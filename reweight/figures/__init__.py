@@ -1,0 +1,1 @@
+"""Pictures: one file a figure, each a function that draws on given axes and returns them."""

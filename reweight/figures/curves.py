@@ -1,0 +1,91 @@
+"""Curves with their confidence bands and the simulated temperatures."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from reweight.answers.peak import Peak
+from reweight.density_of_states import DensityOfStates
+from reweight.figures.style import BAND, LINE, MARK, SINGLE_COLUMN, styled
+from reweight.notation import quantity_text
+
+if TYPE_CHECKING:
+    import xarray as xr
+    from matplotlib.axes import Axes
+    from matplotlib.figure import Figure
+
+__all__ = ["curve_figure", "draw_curve", "draw_peak", "simulated_marks"]
+
+
+def draw_curve(axes: Axes, dataset: xr.Dataset, label: str) -> Axes:
+    """Draw one quantity of a dataset from :func:`reweight.curve` against temperature."""
+    temperature = dataset["temperature"].to_numpy()
+    interval = dataset[f"{label}_interval"].to_numpy()
+    axes.fill_between(temperature, interval[:, 0], interval[:, 1], color=BAND, linewidth=0)
+    few = temperature.size < 12
+    axes.plot(temperature, dataset[label].to_numpy(), color=LINE, marker="o" if few else "", markersize=3)
+    axes.set_ylabel(_axis_text(dataset[label].attrs["long_name"], dataset[label].attrs["units"]))
+    axes.set_xlabel(_axis_text("temperature", dataset["temperature"].attrs["units"]))
+    return axes
+
+
+def simulated_marks(axes: Axes, combined: DensityOfStates) -> Axes:
+    """Mark the simulated temperatures on the temperature axis, where they fall inside its limits."""
+    low, high = axes.get_xlim()
+    inside = [t for t in combined.temperatures if np.isfinite(t) and low <= t <= high]
+    axes.plot(
+        inside,
+        np.zeros(len(inside)),
+        transform=axes.get_xaxis_transform(),
+        linestyle="none",
+        marker="|",
+        markersize=7,
+        color=MARK,
+        clip_on=False,
+    )
+    return axes
+
+
+def draw_peak(axes: Axes, peak: Peak) -> Axes:
+    """Draw a peak with the standard errors of its position and height."""
+    axes.errorbar(
+        peak.temperature,
+        peak.height,
+        xerr=None if peak.at_edge else peak.temperature_standard_error,
+        yerr=peak.height_standard_error,
+        color=MARK,
+        marker="o",
+        markersize=3,
+        linestyle="none",
+        elinewidth=1,
+        capsize=2,
+    )
+    return axes
+
+
+def curve_figure(combined: DensityOfStates, dataset: xr.Dataset, marked: Sequence[Peak] = ()) -> Figure:
+    """Every quantity of a dataset from :func:`reweight.curve` in a panel of its own, peaks marked in the last."""
+    from matplotlib.figure import Figure
+
+    labels = [str(name) for name in dataset.data_vars if f"{name}_interval" in dataset]
+    with styled():
+        figure = Figure(figsize=(SINGLE_COLUMN, 0.4 + 1.9 * len(labels)))
+        panels = figure.subplots(len(labels), 1, sharex=True, squeeze=False)[:, 0]
+        for axes, label in zip(panels, labels, strict=True):
+            draw_curve(axes, dataset, label)
+            simulated_marks(axes, combined)
+            axes.label_outer()
+        for peak in marked:
+            draw_peak(panels[-1], peak)
+        level = 100 * dataset.attrs["level"]
+        panels[0].set_title(
+            f"band: {level:g} % interval; ticks: simulated temperatures", fontsize=7, loc="left"
+        )
+    return figure
+
+
+def _axis_text(name: str, unit: str) -> str:
+    return name if unit in ("", "1") else f"{name} ({quantity_text('', unit).strip()})"

@@ -1,0 +1,207 @@
+"""Everything wrong with a study is said, with the path of its key."""
+
+import re
+
+import pytest
+
+from reweight.errors import StudyError
+from reweight.study import parse_study
+
+GOOD_RUN = '[[run]]\nname = "a"\ntemperature = 1.0\nfiles = "a.dat"\n'
+GOOD_HEAD = 'schema = 1\nenergy_unit = "reduced"\n'
+
+
+def refused(text):
+    with pytest.raises(StudyError, match="study") as caught:
+        parse_study(text, folder=".")
+    return caught.value
+
+
+TOP = [
+    ("schema = 2\n", "schema", "must be 1; got 2"),
+    ("", "schema", "must be given"),
+    ('schema = "1"\n', "schema", "must be 1; got '1'"),
+]
+
+
+@pytest.mark.parametrize(("head", "key", "text"), TOP)
+def test_other_schemas_are_refused(head, key, text):
+    error = refused(f'{head}energy_unit = "reduced"\n{GOOD_RUN}')
+    assert error.key == key
+    assert text in str(error)
+
+
+@pytest.mark.parametrize(
+    ("lines", "key", "text"),
+    [
+        ("title = 3", "title", "must be a text in quotes; got 3"),
+        ('temperature_unit = "F"', "temperature_unit", "must be 'K', 'degC' or 'reduced'; got 'F'"),
+        ('temperature_unit = "K"', "temperature_unit", '"reduced" together with energy_unit'),
+        ('energy_kind = "kinetic"', "energy_kind", "must be 'potential' or 'total'"),
+        ('weighting = "equal"', "weighting", "must be 'independent' or 'samples'"),
+        ("resolution = 0", "resolution", "must be finite and greater than 0"),
+        ("resolution = inf", "resolution", "must be finite and greater than 0"),
+        ("tittle = 'x'", "tittle", "is no key of a study file. Did you mean 'title'?"),
+        ("count = 3", "count", "is no key of a study file. Did you mean system.count?"),
+        ("zzz = 3", "zzz", "is no key of a study file. Known here: columns, conditions"),
+        ("system = 3", "system", "must be a table; got 3"),
+        ("[system]\ncount = 0", "system.count", "must be greater than 0; got 0"),
+        ("[system]\ncount = 2.5", "system.count", "must be a whole number; got 2.5"),
+        ("[system]\ncount = true", "system.count", "must be a whole number; got True"),
+        ('[system]\nenergies_are = "per atom"', "system.count", "must be given, because energies_are"),
+        ('[system]\nenergies_are = "mean"', "system.energies_are", 'must be "total" or "per "'),
+        ('[system]\nper = " "', "system.per", "printable text"),
+        ("[system]\nlength = -1", "system.length", "must be finite and greater than 0"),
+        ('[system]\nstates = "2**256"', "system.states", 'written "base^power", like "2^256"'),
+        ('[system]\nstates = "2^-1"', "system.states", 'written "base^power"'),
+        ('[system]\nstates = "0^5"', "system.states", 'written "base^power"'),
+        ('[system]\nstates = "9^9^9"', "system.states", 'written "base^power"'),
+        ("[system]\nground_degeneracy = 0", "system.ground_degeneracy", "must be greater than 0"),
+        ('[format]\ndecimal = "x"', "format.decimal", "must be '.' or ','"),
+        ('[format]\ndelimiter = "ab"', "format.delimiter", 'must be "blanks", "tab" or one character'),
+        ('[format]\ndelimiter = ","\ndecimal = ","', "format.delimiter", "must differ from format.decimal"),
+        ('[format]\nencoding = "nope"', "format.encoding", 'must be a known encoding like "utf-8"'),
+        ('[format]\ncomment = [""]', "format.comment", "must hold what begins a comment line"),
+        ("[format]\nheader = 1", "format.header", "must be true or false"),
+        ("[columns]\nenergy = 0", "columns.energy", "position counted from 1; got 0"),
+        ("[columns]\nenergy = true", "columns.energy", "position counted from 1; got True"),
+        ("[columns]\nenergy = []", "columns.energy", "each column to be summed once; got []"),
+        ("[columns]\nenergy = [1, 1]", "columns.energy", "each column to be summed once"),
+        ("[columns]\nenergy = 1.5", "columns.energy", "position counted from 1; got 1.5"),
+        ("[observables.m]\nunit = '1'", "observables.m.column", "must be given"),
+        (
+            "[observables.m]\ncolumn = 1\nunit = 'a b/'",
+            "observables.m.unit",
+            "product of powers of unit names",
+        ),
+        (
+            "[observables.m]\ncolumn = 1\nis = 'mean'",
+            "observables.m.is",
+            "must be 'total', 'per site' or 'plain'",
+        ),
+        ("[observables.m]\ncolumn = 1\nmoments = [0]", "observables.m.moments", "whole numbers from 1 to 8"),
+        ("[observables.m]\ncolumn = 1\nmoments = [9]", "observables.m.moments", "whole numbers from 1 to 8"),
+        ("[observables.m]\ncolumn = 1\nmoments = []", "observables.m.moments", "whole numbers from 1 to 8"),
+        (
+            "[observables.m]\ncolumn = 1\nmoments = [true]",
+            "observables.m.moments",
+            "whole numbers from 1 to 8",
+        ),
+        ("[observables.energy]\ncolumn = 1", "observables.energy", 'not "energy"'),
+        ('[observables."a b"]\ncolumn = 1', "observables.a b", "must be named with letters"),
+        ("[observables.größe]\ncolumn = 1".replace("größe", '"größe"'), "observables.größe", "must be named"),
+        ("[observables.m]\ncolumm = 1\ncolumn = 1", "observables.m.columm", "Did you mean 'column'?"),
+    ],
+)
+def test_wrong_value_is_refused_with_its_key(lines, key, text):
+    error = refused(f"{GOOD_HEAD}{lines}\n{GOOD_RUN}")
+    assert error.key == key
+    assert f"study: {key}" in str(error)
+    assert text in str(error)
+
+
+@pytest.mark.parametrize(
+    ("lines", "key", "text"),
+    [
+        ("files = 'b'", "temperature", "but not both; got neither"),
+        ("files = 'b'\ntemperature = 1\nbeta = 1", "temperature", "but not both; got both"),
+        ("files = 'b'\ntemperature = 0", "temperature", "must lie above absolute zero; got 0"),
+        ("files = 'b'\ntemperature = -3.0", "temperature", "must lie above absolute zero; got -3.0"),
+        ("files = 'b'\ntemperature = nan", "temperature", "must be a number; got nan"),
+        ("files = 'b'\ntemperature = -inf", "temperature", "must be a number; got -inf"),
+        ("files = 'b'\ntemperature = 'inf'", "temperature", "must be a number; got 'inf'"),
+        ("files = 'b'\ntemperature = 1e-320", "temperature", "must be large enough"),
+        ("files = 'b'\nbeta = -1", "beta", "must be finite and not negative; got -1"),
+        ("files = 'b'\nbeta = inf", "beta", "must be finite and not negative; got inf"),
+        ("temperature = 1", "files", "must be given"),
+        ("temperature = 1\nfiles = []", "files", "must not be empty"),
+        ("temperature = 1\nfiles = ['']", "files", "must hold names of files"),
+        ("temperature = 1\nfiles = [3]", "files[1]", "must be a text in quotes; got 3"),
+        ("temperature = 1\nfiles = ['b', 'b']", "files", "must not be read twice; got 'b', listed in run[2]"),
+        (
+            "temperature = 1\nfiles = ['./a.dat']",
+            "files",
+            "must not be read twice; got './a.dat', listed in run[1]",
+        ),
+        ("temperature = 1\nfiles = 'x/a.gz'", "name", "must be unique; got 'a', as for run[1]"),
+        ("temperature = 1\nfiles = 'b'\nuse = false", "reason", "must say why the run is left out"),
+        ("temperature = 1\nfiles = 'b'\nuse = false\nreason = ' '", "reason", "must say why"),
+        ("temperature = 1\nfiles = 'b'\nuse = 'no'", "use", "must be true or false"),
+        ("temperature = 1\nfiles = 'b'\ndiscard = -1", "discard", 'must be "auto", a number of rows'),
+        ("temperature = 1\nfiles = 'b'\ndiscard = true", "discard", 'must be "auto", a number of rows'),
+        ("temperature = 1\nfiles = 'b'\ndiscard = '100 %'", "discard", "percentage below 100"),
+        ("temperature = 1\nfiles = 'b'\ndiscard = '20 ns'", "discard", "('20 ns') is known but this version"),
+        ("temperature = 1\nfiles = 'b'\ntemprature = 2", "temprature", "Did you mean 'temperature'?"),
+    ],
+)
+def test_wrong_value_in_a_run_is_refused_with_the_number_of_the_run(lines, key, text):
+    error = refused(f"{GOOD_HEAD}{GOOD_RUN}[[run]]\n{lines}\n")
+    assert error.key == f"run[2].{key}"
+    assert text in str(error)
+
+
+@pytest.mark.parametrize("name", ["", " ", "a/b", ".", "..", "a\\u0007", " a"])
+def test_unusable_names_are_refused(name):
+    error = refused(f'{GOOD_HEAD}[[run]]\nname = "{name}"\ntemperature = 1\nfiles = "a"\n')
+    assert error.key == "run[1].name"
+
+
+def test_name_of_the_run_is_said():
+    error = refused(f'{GOOD_HEAD}[[run]]\nname = "640K"\ntemperature = -1\nfiles = "a"\n')
+    assert "run[1].temperature (run '640K') must lie above absolute zero; got -1" in str(error)
+
+
+def test_celsius_temperatures_may_be_negative_but_not_below_absolute_zero():
+    head = 'schema = 1\nenergy_unit = "eV"\ntemperature_unit = "degC"\n'
+    parse_study(f'{head}[[run]]\ntemperature = -10\nfiles = "a"\n', folder=".")
+    error = refused(f'{head}[[run]]\ntemperature = -274\nfiles = "a"\n')
+    assert "absolute zero (-273.15 degC); got -274" in str(error)
+
+
+def test_at_least_one_run_is_needed():
+    assert refused(GOOD_HEAD).key == "run"
+    assert refused(f"{GOOD_HEAD}run = []\n").key == "run"
+    error = refused(f"{GOOD_HEAD}{GOOD_RUN}use = false\nreason = 'bad'\n")
+    assert "at least one run with use = true" in str(error)
+
+
+@pytest.mark.parametrize(
+    ("lines", "key"),
+    [
+        ('[conditions]\npressure = "1 bar"', "conditions.pressure"),
+        ("[conditions]\ndegrees_of_freedom = 3", "conditions.degrees_of_freedom"),
+        ("[conditions]\nexchange = true", "conditions.exchange"),
+        ('[columns]\ntime = "t"', "columns.time"),
+        ('[columns]\ntime_unit = "ps"', "columns.time_unit"),
+        ('[columns]\nvolume = "V"', "columns.volume"),
+        ('[columns]\ntemperature = "T"', "columns.temperature"),
+        ("[observables.m]\ncolumn = 1\nabove = 0.5", "observables.m.above"),
+        ("[observables.m]\ncolumn = 1\nbins = [0.0, 1.0, 50]", "observables.m.bins"),
+        ("[report]\nauthor = 'x'", "report"),
+    ],
+)
+def test_keys_of_later_features_are_refused_by_name(lines, key):
+    error = refused(f"{GOOD_HEAD}{lines}\n{GOOD_RUN}")
+    assert error.key == key
+    assert f"{key} is known but this version cannot use it yet; remove it." in str(error)
+
+
+def test_later_keys_at_the_value_that_asks_for_nothing_are_fine():
+    parse_study(f"{GOOD_HEAD}[conditions]\nexchange = false\ndegrees_of_freedom = 0\n{GOOD_RUN}", folder=".")
+
+
+def test_all_problems_are_listed_at_once():
+    error = refused(
+        'schema = 1\nenergy_unit = "eW"\n[system]\ncount = -1\n[conditions]\nexchange = true\n'
+        '[[run]]\nname = "x"\ntemperature = "hot"\nfiles = []\n'
+    )
+    assert str(error).startswith("study has 5 problems:\n")
+    found = re.findall(r"^  (\S+)", str(error), flags=re.MULTILINE)
+    assert found == [
+        "conditions.exchange",
+        "energy_unit",
+        "system.count",
+        "run[1].temperature",
+        "run[1].files",
+    ]
+    assert error.key == "conditions.exchange"
