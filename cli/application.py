@@ -14,7 +14,12 @@ import click
 from reweight.cli.combine import combine
 from reweight.cli.curve import curve
 from reweight.cli.demo import demo
+from reweight.cli.distribution import distribution
+from reweight.cli.explain import explain
 from reweight.cli.peak import peak
+from reweight.cli.runs import runs
+from reweight.cli.show import show
+from reweight.cli.states import states
 
 from reweight.errors import ReweightError
 from reweight.version import VERSION
@@ -22,9 +27,10 @@ from reweight.version import VERSION
 __all__ = ["application", "main"]
 
 SECTIONS = {
+    "Bring data in": (runs,),
     "Combine": (combine,),
-    "Ask": (curve, peak),
-    "Learn": (demo,),
+    "Ask": (show, curve, peak, distribution, states),
+    "Learn": (demo, explain),
 }
 
 

@@ -9,11 +9,12 @@ from typing import TYPE_CHECKING, Any
 
 import click
 from reweight.cli import options, screen
-from reweight.cli.peak import describe_peak
+from reweight.cli.peak import describe_extension, describe_peak
+from reweight.cli.runs import one_in, runs_record, runs_table
 
 if TYPE_CHECKING:
     from reweight.checks.finding import Finding
-    from reweight.density_of_states import DensityOfStates, RunRecord
+    from reweight.density_of_states import DensityOfStates
 
 __all__ = ["combine", "run_combine"]
 
@@ -100,17 +101,14 @@ def _print(combined: DensityOfStates, found: list[Finding], target: Path) -> Non
     from reweight.checks.finding import Verdict, worst
 
     description = combined.description
-    unit = description.temperature_label
     title = description.title or "untitled study"
-    units = f"energies in {description.energy_unit}, temperatures in {unit}" if unit else "reduced units"
-    click.echo(f"{title}: {units}, {description.energy_kind} energies")
+    click.echo(f"{title}: {screen.units_text(description)}, {description.energy_kind} energies")
     concerns = sorted(
         (each for each in found if each.verdict is not Verdict.SOUND), key=lambda each: -each.verdict
     )
     shown = _runs_to_show(combined, concerns)
     if shown:
-        header = ("run", "samples", "transient", "independent", "shared with next hotter")
-        screen.print_table(header, [_row(combined, place) for place in shown], indent=2)
+        screen.print_table(*runs_table(combined, shown), indent=2)
     if len(shown) < len(combined.runs):
         click.echo(_in_short(combined, "the others: " if shown else ""))
     click.echo(_account(combined))
@@ -135,29 +133,14 @@ def _runs_to_show(combined: DensityOfStates, concerns: list[Finding]) -> list[in
     return [place for place in order if combined.runs[place].name in named]
 
 
-def _one_in(run: RunRecord) -> str:
-    from reweight.notation import bracket
-
-    found = run.decision.inefficiency
-    if found.constant:
-        return "constant"
-    if found.value <= 1:
-        return "all"
-    return f"one in {bracket(found.value, found.standard_error, digits=1)}"
-
-
-def _row(combined: DensityOfStates, place: int) -> tuple[str, ...]:
-    run = combined.runs[place]
-    rank = list(combined.cold_to_hot).index(place)
-    shared = f"{combined.sharing[rank]:,.3g}" if rank < len(combined.sharing) else ""
-    return (run.name, f"{run.samples:,}", f"{run.transient_rows:,}", _one_in(run), shared)
-
-
 def _in_short(combined: DensityOfStates, prefix: str) -> str:
-    slowest = max(combined.runs, key=lambda run: run.decision.inefficiency.value)
+    slowest = max(
+        range(len(combined.runs)), key=lambda place: combined.runs[place].decision.inefficiency.value
+    )
     fewest = min(combined.runs, key=lambda run: run.independent_samples)
     text = (
-        f"{prefix}{screen.counted(len(combined.runs), 'run')}; slowest {slowest.name}, {_one_in(slowest)} independent; "
+        f"{prefix}{screen.counted(len(combined.runs), 'run')}; slowest {combined.runs[slowest].name}, "
+        f"{one_in(combined, slowest)} independent; "
         f"shortest {fewest.name}, {fewest.independent_samples:,.0f} independent samples"
     )
     if len(combined.sharing):
@@ -203,27 +186,12 @@ def _headline(combined: DensityOfStates) -> list[str]:
         best = peaks(combined)[0]
     except OutOfReachError as error:
         return [*lines, str(error)]
-    return lines + describe_peak(combined, best, 0.95)[:2]
+    return [*lines, *describe_peak(combined, best, 0.95)[:2], *describe_extension(best)]
 
 
 def _record(combined: DensityOfStates, found: list[Finding], target: Path) -> dict[str, Any]:
     import dataclasses
 
-    runs = [
-        {
-            "name": run.name,
-            "temperature": float(combined.temperatures[place]),
-            "beta": run.beta,
-            "rows": run.rows,
-            "transient": run.transient_rows,
-            "samples": run.samples,
-            "statistical_inefficiency": run.decision.inefficiency.value,
-            "statistical_inefficiency_standard_error": run.decision.inefficiency.standard_error,
-            "independent_samples": run.independent_samples,
-            "files": list(run.files),
-        }
-        for place, run in enumerate(combined.runs)
-    ]
     return screen.envelope(
         combined,
         "combine",
@@ -233,7 +201,7 @@ def _record(combined: DensityOfStates, found: list[Finding], target: Path) -> di
             "temperature": combined.description.temperature_unit,
         },
         file=str(target),
-        runs=runs,
+        runs=runs_record(combined),
         left_out=[dataclasses.asdict(each) for each in combined.left_out],
         sharing=combined.sharing,
         findings=[{**dataclasses.asdict(each), "verdict": str(each.verdict)} for each in found],

@@ -21,6 +21,9 @@ __all__ = ["curve"]
 )
 @options.at_options
 @options.range_options
+@click.option(
+    "--reference", type=float, metavar="T", help="Where entropies are counted from.  [default: coldest run]"
+)
 @options.question_options
 @options.output_options
 def curve(
@@ -30,6 +33,7 @@ def curve(
     points: int | None,
     lowest: float | None,
     highest: float | None,
+    reference: float | None,
     per_count: bool,
     energy_unit: str | None,
     level: float,
@@ -52,16 +56,18 @@ def curve(
 
     combined = screen.opened(file, quiet=quiet)
     if "list" in of:
-        screen.print_table(("name", "what"), [(each.name, each.long_name) for each in available().values()])
+        screen.print_table(
+            ("name", "what"),
+            [(each.name, each.long_name) for each in available(combined.description.normalisations).values()],
+        )
         return
     if at and (points is not None or lowest is not None or highest is not None):
         raise click.UsageError(
             "--at names single temperatures; it does not go with --from, --to or --points."
         )
-    temperatures = [t for group in at for t in group] or None
-    unit = combined.description.temperature_label
+    temperatures = options.flattened(at) or None
     if temperatures is not None:
-        screen.message(f"at {', '.join(f'{t:g}' for t in temperatures)} {unit}".rstrip(), quiet=quiet)
+        screen.echo_temperatures(combined, temperatures, quiet=quiet)
     dataset = ask(
         combined,
         temperatures,
@@ -69,6 +75,7 @@ def curve(
         lowest=lowest,
         highest=highest,
         points=DEFAULT_POINTS if points is None else points,
+        reference=reference,
         level=level,
         per_count=per_count,
         energy_unit=energy_unit,
@@ -87,14 +94,7 @@ def curve(
     else:
         _print(dataset)
     outside = int((~dataset["within_reach"]).sum())
-    if outside:
-        what = "answered beyond the reach" if beyond_reach else "out of reach and left empty"
-        screen.message(
-            f"{outside} of {screen.counted(dataset.sizes['temperature'], 'temperature')} {what} "
-            "for at least one quantity"
-            + ("" if beyond_reach else "; --beyond-reach shows unsupported estimates"),
-            quiet=quiet,
-        )
+    screen.tell_outside(outside, dataset.sizes["temperature"], beyond=beyond_reach, quiet=quiet)
 
 
 def _labels(dataset: xr.Dataset) -> list[str]:
@@ -107,9 +107,9 @@ def _content(dataset: xr.Dataset) -> dict[str, Any]:
     content: dict[str, Any] = {"units": {name: dataset[name].attrs["units"] for name in names}}
     content["temperature"] = dataset["temperature"].to_numpy()
     for label in labels:
-        for part in (label, f"{label}_standard_error", f"{label}_interval", f"{label}_within_reach"):
-            content[part] = dataset[part].to_numpy()
-    for name in ("effective_sample_size", "within_reach"):
+        for part in ("", "_standard_error", "_interval", "_within_reach", "_variance_share"):
+            content[label + part] = dataset[label + part].to_numpy()
+    for name in ("effective_sample_size", "within_reach", "run"):
         content[name] = dataset[name].to_numpy()
     return content
 

@@ -8,7 +8,17 @@ from typing import Any, TypeVar
 
 import click
 
-__all__ = ["at_options", "output_options", "plain_path", "question_options", "range_options"]
+__all__ = [
+    "at_options",
+    "bin_option",
+    "flattened",
+    "level_option",
+    "output_options",
+    "plain_path",
+    "question_options",
+    "range_options",
+    "single_temperatures",
+]
 
 Command = TypeVar("Command", bound=Callable[..., Any])
 
@@ -38,13 +48,30 @@ def _apply(command: Command, *options: Callable[[Command], Command]) -> Command:
     return command
 
 
+single_temperatures = click.option(
+    "--at", type=Numbers(), multiple=True, help="Temperatures; repeatable, or parted by commas."
+)
+level_option = click.option(
+    "--level", type=float, default=0.95, show_default=True, help="Level of confidence intervals."
+)
+bin_option = click.option(
+    "--bin-width",
+    type=float,
+    metavar="E",
+    help="Width of energy bins.  [default: single levels, or four of the finest bins kept]",
+)
+
+
+def flattened(at: tuple[tuple[float, ...], ...]) -> list[float]:
+    """Return all temperatures named by --at, in their order."""
+    return [temperature for group in at for temperature in group]
+
+
 def at_options(command: Command) -> Command:
     """Single temperatures."""
     return _apply(
         command,
-        click.option(
-            "--at", type=Numbers(), multiple=True, help="Temperatures; repeatable, or parted by commas."
-        ),
+        single_temperatures,
         click.option(
             "--points", type=int, default=None, help="Temperatures between --from and --to.  [default: 101]"
         ),
@@ -74,9 +101,7 @@ def question_options(command: Command) -> Command:
         click.option(
             "--energy-unit", metavar="UNIT", help="Unit of energies in the answers.  [default: the study's]"
         ),
-        click.option(
-            "--level", type=float, default=0.95, show_default=True, help="Level of confidence intervals."
-        ),
+        level_option,
         click.option(
             "--errors",
             type=click.Choice(["linear", "bootstrap"]),

@@ -12,7 +12,7 @@ if TYPE_CHECKING:
     from reweight.answers.peak import Peak
     from reweight.density_of_states import DensityOfStates
 
-__all__ = ["describe_peak", "peak"]
+__all__ = ["describe_extension", "describe_peak", "peak"]
 
 
 @click.command(short_help="Position and height of the heat-capacity peak, or of any other.")
@@ -78,7 +78,7 @@ def _flat(found: Peak) -> list[Any]:
 def _print(combined: DensityOfStates, found: tuple[Peak, ...], level: float) -> None:
     standing = [each for each in found if each.stands_out]
     for each in standing or found[:1]:
-        for line in describe_peak(combined, each, level):
+        for line in [*describe_peak(combined, each, level), *describe_extension(each)]:
             click.echo(line)
     rest = len(found) - len(standing) if standing else len(found) - 1
     if rest:
@@ -116,4 +116,16 @@ def describe_peak(combined: DensityOfStates, found: Peak, level: float) -> list[
         f"  height {height}, {span} {bottom:.5g} to {top:.5g}",
         f"  correlation of the two errors {found.correlation:+.2f}; stands {found.prominence:.3g} standard errors "
         "above the valley beside it",
+    ]
+
+
+def describe_extension(found: Peak) -> list[str]:
+    """Say which run to extend, and what four times its samples would bring."""
+    if found.at_edge or len(found.variance_share) < 2:
+        return []
+    name, (share, _) = max(found.variance_share.items(), key=lambda item: item[1][0])
+    error = found.temperature_standard_error
+    return [
+        f"  {100 * share:.0f} % of the variance of the position comes from {name}: four times its samples would bring "
+        f"the error from {error:.2g} to {error * (1 - 0.75 * share) ** 0.5:.2g}"
     ]

@@ -15,9 +15,21 @@ import click
 from reweight.files import write_text
 
 if TYPE_CHECKING:
-    from reweight.density_of_states import DensityOfStates
+    from reweight.density_of_states import DensityOfStates, Description
 
-__all__ = ["counted", "envelope", "message", "opened", "plain", "print_json", "print_table", "write_csv"]
+__all__ = [
+    "counted",
+    "echo_temperatures",
+    "envelope",
+    "message",
+    "opened",
+    "plain",
+    "print_json",
+    "print_table",
+    "tell_outside",
+    "units_text",
+    "write_csv",
+]
 
 
 def message(text: str, *, quiet: bool = False) -> None:
@@ -37,13 +49,38 @@ def counted(number: int, noun: str) -> str:
     return f"{number:,} {noun}{'' if number == 1 else 's'}"
 
 
-def print_table(header: Sequence[str], rows: Iterable[Sequence[str]], *, indent: int = 0) -> None:
-    """Print columns under their headings, numbers to the right."""
+def units_text(description: Description) -> str:
+    """Units of a study in words."""
+    unit = description.temperature_label
+    return f"energies in {description.energy_unit}, temperatures in {unit}" if unit else "reduced units"
+
+
+def echo_temperatures(combined: DensityOfStates, temperatures: Sequence[float], *, quiet: bool) -> None:
+    """Tell as which temperatures --at was read."""
+    unit = combined.description.temperature_label
+    message(f"at {', '.join(f'{t:g}' for t in temperatures)} {unit}".rstrip(), quiet=quiet)
+
+
+def tell_outside(outside: int, total: int, *, beyond: bool, quiet: bool) -> None:
+    """Tell how many temperatures are out of reach, if any."""
+    if not outside:
+        return
+    what = "answered beyond the reach" if beyond else "out of reach and left empty"
+    hint = "" if beyond else "; --beyond-reach shows unsupported estimates"
+    message(
+        f"{outside} of {counted(total, 'temperature')} {what} for at least one quantity{hint}", quiet=quiet
+    )
+
+
+def print_table(
+    header: Sequence[str], rows: Iterable[Sequence[str]], *, indent: int = 0, left: Sequence[int] = (0,)
+) -> None:
+    """Print columns under their headings, numbers to the right and the columns in `left` to the left."""
     lines = [list(header), *(list(row) for row in rows)]
     widths = [max(len(line[column]) for line in lines) for column in range(len(header))]
     for line in lines:
         cells = [
-            cell.ljust(width) if column == 0 else cell.rjust(width)
+            cell.ljust(width) if column in left else cell.rjust(width)
             for column, (cell, width) in enumerate(zip(line, widths, strict=True))
         ]
         click.echo((" " * indent + "  ".join(cells)).rstrip())

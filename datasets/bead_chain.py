@@ -2,22 +2,24 @@
 
 A generic model with numbers of our own: beads in free space joined by rigid bonds of length a, with
 
-    stiffness (1 - cos(bond angle))                        at every inner bead,
-    well_depth (s**2 - 2 s) - value at the cutoff,         between beads three or more bonds apart,
-        s = (well_distance / r)**4, zero beyond the cutoff: soft and broad, one bead stands for several monomers.
+    stiffness (1 - cos(angle between the two bonds))    at every inner bead,
+    well_depth (s**2 - 2 s) - its value at the cutoff   between beads three or more bonds apart,
+        s = (well_distance / r)**6, and nothing beyond the cutoff.
 
 On cooling the chain collapses from an open coil into a compact globule, which shows as a peak of the heat
 capacity.  Every run starts from a stretched zigzag.
 
 A trial turns some consecutive beads about the line through the two beads that hold them, or, at an end of the
-chain, about a line of any direction through the one that does.  Lines and angles are drawn without regard to
-the positions and the angle's sign is even, so the trials are symmetric and bonds keep their length.  The
-angle comes as t = tan(angle / 2): its sine and cosine are then fractions of t, and apart from the logarithm in
+chain, about a line of any direction through the one that does.  Beads, directions and angles are drawn without
+regard to the positions, and an angle is as likely as its opposite: every trial is as likely as the one that
+undoes it.  Bonds keep their length.
+
+An angle comes as t = tan(angle / 2): its sine and cosine are then fractions of t, and apart from the logarithm in
 the acceptance test everything is +, -, *, / and square roots, which do not differ between machines.
 
 The runs at different temperatures share the array operations and nothing else: nothing is exchanged.
 
-Units: kJ/mol, nm, K.  Shape letters: R runs, B beads, P pairs, N stored rows.
+Units: kJ/mol, nm, K.  Shape letters: R runs, B beads, N stored rows.
 """
 
 from dataclasses import dataclass
@@ -30,6 +32,7 @@ from scipy import constants
 __all__ = ["GAS_CONSTANT", "BeadChain", "ChainSeries", "simulate_bead_chain"]
 
 GAS_CONSTANT = constants.R / 1000.0  # k_B for a mole of chains, kJ/(mol K)
+NEXT, LAST = [1, 2, 0], [2, 0, 1]  # the other two axes, in cyclic order
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -50,10 +53,10 @@ class BeadChain:
 
     bead_count: int = 20
     bond_length: float = 0.38
-    stiffness: float = 19.0
-    well_depth: float = 2.2
-    well_distance: float = 0.6
-    cutoff: float = 1.3
+    stiffness: float = 13.5
+    well_depth: float = 2.8
+    well_distance: float = 0.5
+    cutoff: float = 1.1
 
     def stretched(self, run_count: int) -> NDArray[np.float64]:
         """Positions of the stretched zigzag, shape (3, B, R): bond angles of 60 degrees from straight."""
@@ -66,7 +69,7 @@ class BeadChain:
     def potential_energy(self, positions: NDArray[np.float64]) -> NDArray[np.float64]:
         """Energies in kJ/mol, shape (R,), of positions in nm, shape (3, B, R)."""
         first, second = _distant_pairs(self.bead_count)
-        squared_distances = _squared_length(positions[:, first] - positions[:, second])
+        squared_distances = _squared_length(positions.take(first, axis=1) - positions.take(second, axis=1))
         attraction = self._pair_energy(squared_distances).sum(axis=0)
         # two bonds at an angle span a (2 + 2 cos)**0.5
         spans = _squared_length(positions[:, 2:] - positions[:, :-2])
@@ -75,9 +78,9 @@ class BeadChain:
 
     def _pair_energy(self, squared_distances: NDArray[np.float64]) -> NDArray[np.float64]:
         ratio = self.well_distance**2 / squared_distances
-        s_cutoff = (self.well_distance / self.cutoff) ** 4
+        s_cutoff = (self.well_distance / self.cutoff) ** 6
         # beyond the well s decreases with r: raising it to its value at the cutoff cuts the potential there
-        s = np.maximum(ratio * ratio, s_cutoff)
+        s = np.maximum(ratio * ratio * ratio, s_cutoff)
         return self.well_depth * (s * (s - 2.0) - s_cutoff * (s_cutoff - 2.0))
 
 
@@ -127,16 +130,19 @@ def simulate_bead_chain(
     potential = np.empty((run_count, row_count))
     radius_of_gyration = np.empty((run_count, row_count))
     for row in range(row_count):
-        lengths = rng.integers(1, chain.bead_count, interval)
+        # mostly few beads, which is all that a dense globule lets through
+        lengths = 1 + np.floor((chain.bead_count - 1) * rng.random(interval) ** 2).astype(int)
         starts = rng.integers(0, chain.bead_count + 1 - lengths)
         draws = rng.uniform(-1.0, 1.0, (interval, run_count))
-        half_tangents = draws * np.abs(draws)  # small angles for the globule, up to 90 degrees for the coil
+        half_tangents = draws * np.abs(draws)  # mostly small angles, for the same reason; up to 90 degrees
+        cosines = (1.0 - half_tangents**2) / (1.0 + half_tangents**2)
+        sines = 2.0 * half_tangents / (1.0 + half_tangents**2)
         directions = rng.uniform(-1.0, 1.0, (interval, 3, run_count))
         # u < exp(-dE / kT), written as dE < -kT ln u
         limits = -thermal_energies * np.log(rng.random((interval, run_count)))
         for trial in range(interval):
             start, stop = starts[trial], starts[trial] + lengths[trial]
-            turned = _turned(positions, start, stop, half_tangents[trial], directions[trial])
+            turned = _turned(positions, start, stop, cosines[trial], sines[trial], directions[trial])
             turned_energies = chain.potential_energy(turned)
             accepted = turned_energies - energies < limits[trial]
             positions = np.where(accepted, turned, positions)
@@ -161,27 +167,21 @@ def _turned(
     positions: NDArray[np.float64],
     start: int,
     stop: int,
-    half_tangents: NDArray[np.float64],
-    directions: NDArray[np.float64],
+    cosine: NDArray[np.float64],
+    sine: NDArray[np.float64],
+    direction: NDArray[np.float64],
 ) -> NDArray[np.float64]:
     """Positions with the beads start .. stop - 1 turned about their axis (Rodrigues' rotation formula)."""
     bead_count = positions.shape[1]
     anchor = positions[:, start - 1 if start > 0 else stop]
     inner = start > 0 and stop < bead_count
-    axis = positions[:, stop] - anchor if inner else directions
+    axis = positions[:, stop] - anchor if inner else direction
     axis = (axis / np.sqrt(_squared_length(axis)))[:, None]
-    scale = 1.0 / (1.0 + half_tangents * half_tangents)
-    cosine = (1.0 - half_tangents * half_tangents) * scale
-    sine = 2.0 * half_tangents * scale
     arms = positions[:, start:stop] - anchor[:, None]
-    along = axis[0] * arms[0] + axis[1] * arms[1] + axis[2] * arms[2]
-    across = np.stack(
-        [
-            axis[1] * arms[2] - axis[2] * arms[1],
-            axis[2] * arms[0] - axis[0] * arms[2],
-            axis[0] * arms[1] - axis[1] * arms[0],
-        ]
-    )
+    products = axis * arms
+    along = products[0] + products[1] + products[2]
+    axis_next, axis_last = axis.take(NEXT, axis=0), axis.take(LAST, axis=0)
+    across = axis_next * arms.take(LAST, axis=0) - axis_last * arms.take(NEXT, axis=0)
     turned = positions.copy()
     turned[:, start:stop] = anchor[:, None] + cosine * arms + sine * across + (1.0 - cosine) * along * axis
     return turned
@@ -189,4 +189,5 @@ def _turned(
 
 def _squared_length(vectors: NDArray[np.float64]) -> NDArray[np.float64]:
     """Sum of squares over the leading axis of three; written out, so that its order never depends on a library."""
-    return np.asarray(vectors[0] * vectors[0] + vectors[1] * vectors[1] + vectors[2] * vectors[2])
+    squares = vectors * vectors
+    return np.asarray(squares[0] + squares[1] + squares[2])

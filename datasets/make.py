@@ -70,7 +70,7 @@ class Setting:
 
 BEAD_CHAIN = Setting(
     folder="bead_chain",
-    temperatures=(240.0, 265.0, 290.0, 315.0, 340.0, 370.0, 410.0, 460.0),
+    temperatures=(240.0, 262.0, 284.0, 308.0, 335.0, 370.0, 415.0, 470.0),
     run_name="{:.0f}K",
     file_name="chain_{:.0f}K.dat",
     row_count=10_000,
@@ -79,7 +79,7 @@ BEAD_CHAIN = Setting(
     header="step  potential[kJ/mol]  radius_of_gyration[nm]",
     units={"step": "trials", "potential": "kJ/mol", "radius_of_gyration": "nm"},
     origin=(
-        f"Metropolis sampling of one chain of {CHAIN.bead_count} beads with rigid bonds, bending stiffness and a soft,"
+        f"Metropolis sampling of one chain of {CHAIN.bead_count} beads with rigid bonds, bending stiffness and a"
         " truncated pair attraction; eight independent runs from a stretched start."
     ),
     study=f"""\

@@ -16,7 +16,10 @@ from reweight.version import VERSION
 
 if TYPE_CHECKING:
     from reweight.answers.curve import answer, curve
+    from reweight.answers.distribution import distribution
     from reweight.answers.peak import Peak, peaks
+    from reweight.answers.reach import Reach, reach
+    from reweight.answers.states import states
     from reweight.density_of_states import DensityOfStates
     from reweight.errors import (
         DataFileError,
@@ -40,17 +43,21 @@ __all__ = [
     "InputError",
     "OutOfReachError",
     "Peak",
+    "Reach",
     "ReweightError",
     "StudyError",
     "__version__",
     "answer",
     "combine",
     "curve",
+    "distribution",
     "load_study",
     "open_combined",
     "peaks",
+    "reach",
     "read_runs",
     "save",
+    "states",
 ]
 
 # Public names are loaded when first used: xarray and SciPy take seconds to import, `reweight --help` must not.
@@ -61,16 +68,20 @@ _HOMES = {
     "InputError": "errors",
     "OutOfReachError": "errors",
     "Peak": "answers.peak",
+    "Reach": "answers.reach",
     "ReweightError": "errors",
     "StudyError": "errors",
     "answer": "answers.curve",
     "combine": "studies",
     "curve": "answers.curve",
+    "distribution": "answers.distribution",
     "load_study": "study",
     "open_combined": "saving",
     "peaks": "answers.peak",
+    "reach": "answers.reach",
     "read_runs": "runs",
     "save": "saving",
+    "states": "answers.states",
 }
 
 

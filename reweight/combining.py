@@ -34,6 +34,8 @@ Array = NDArray[np.float64]
 
 FIRST_ROWS = 4096
 FEWEST_ROWS = 10
+FEWEST_LEAVES = 5  # after the transient; from fewer blocks no error can be told
+LARGEST_ENERGY = 1e60  # the reach asks for eighth powers, which must stay finite
 WORKERS = 2
 
 # Called with a run's name and the number of rows just tallied; 0 once the run is complete.
@@ -47,10 +49,17 @@ def combine_sources(
     left_out: Sequence[LeftOut] = (),
     study_text: str = "",
     provenance: dict[str, str] | None = None,
+    connected: bool = True,
     workers: int = WORKERS,
     progress: Progress | None = None,
 ) -> DensityOfStates:
     """Tally all sources and combine them.
+
+    Parameters
+    ----------
+    connected : bool
+        Refuse runs that share no energies; otherwise such runs are joined by pairwise estimates that mean nothing
+        across the gap, for looking at the runs themselves.
 
     Raises
     ------
@@ -73,7 +82,7 @@ def combine_sources(
     return DensityOfStates(
         description=description,
         runs=tuple(records),
-        estimate=estimate_of(description, records, decided.assembly),
+        estimate=estimate_of(description, records, decided.assembly, connected=connected),
         left_out=tuple(left_out),
         study_text=study_text,
         provenance=provenance or {},
@@ -148,6 +157,11 @@ def _opening(stream: Iterator[Array]) -> Array:
 def _nodes(openings: Sequence[Array], beta: Array, description: Description) -> Nodes:
     first = [energies[:FIRST_ROWS] for energies in openings]
     pooled = np.concatenate(first)
+    largest = float(np.abs(pooled).max(initial=0.0))
+    if largest > LARGEST_ENERGY:
+        raise InputError(
+            f"energies must be smaller than {LARGEST_ENERGY:g}; got {largest:g}. Check the unit."
+        )
     spacing = find_spacing(pooled)
     if spacing is not None:
         first = [spacing.snap(energies) for energies in first]
@@ -220,10 +234,10 @@ def _start(
     else:
         transient = int(np.ceil(rows * float(discard.strip(" %")) / 100))
     first_leaf = int(np.searchsorted(np.concatenate([[0], np.cumsum(leaf_rows)]), transient))
-    if first_leaf >= leaf_rows.size or rows - int(leaf_rows[:first_leaf].sum()) < FEWEST_ROWS:
+    if leaf_rows.size - first_leaf < FEWEST_LEAVES or rows - int(leaf_rows[:first_leaf].sum()) < FEWEST_ROWS:
         raise TooShortError(
-            f"discard must leave at least {FEWEST_ROWS} rows; got {discard!r} of {rows} rows (run {name!r}). "
-            "Discard fewer rows, or leave the run out with use = false.",
+            f"discard must leave at least {FEWEST_ROWS} rows in {FEWEST_LEAVES} of the {leaf_rows.size} blocks of a run; "
+            f"got {discard!r} of {rows} rows (run {name!r}). Discard fewer rows, or leave the run out with use = false.",
             run=name,
         )
     return transient, first_leaf
@@ -239,8 +253,10 @@ def _shrunk(raw: Sequence[Inefficiency], kept: Array, groups: Sequence[int]) -> 
     return values
 
 
-def estimate_of(description: Description, runs: Sequence[RunRecord], assembly: Assembly) -> Estimate:
-    """Weight and solve; refuse runs that share nothing.
+def estimate_of(
+    description: Description, runs: Sequence[RunRecord], assembly: Assembly, *, connected: bool = True
+) -> Estimate:
+    """Weight and solve; refuse runs that share nothing, unless they need not be connected.
 
     Raises
     ------
@@ -258,6 +274,8 @@ def estimate_of(description: Description, runs: Sequence[RunRecord], assembly: A
         start = pairwise_start(per_run, counts, beta, energies)
         joined = solution_at(start, counts, beta, energies, iterations=0, residual=np.inf)
         sharing = cut_sharing(shares @ per_run, joined.probabilities, beta)
+        if (sharing < 1).any() and not connected:
+            return joined
         if (sharing < 1).any():
             means = per_run @ energies / counts
             raise _disconnected(description, [run.name for run in runs], beta, means, sharing)

@@ -7,7 +7,8 @@ tally and can be changed without reading a file again.
 from __future__ import annotations
 
 import dataclasses
-from collections.abc import Mapping
+import math
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field
 from functools import cached_property
 from typing import Any
@@ -18,7 +19,10 @@ from numpy.typing import ArrayLike, NDArray
 from reweight import units
 from reweight.errors import InputError
 from reweight.estimate import Estimate
+from reweight.quantities.catalogue import available, named
+from reweight.quantities.quantity import Quantity
 from reweight.series.correlation import Inefficiency
+from reweight.study.values import base_and_power
 from reweight.tally.leaves import COUNT, Column, RunTally, Thinned
 
 __all__ = ["Decision", "DensityOfStates", "Description", "LeftOut", "ObservableDescription", "RunRecord"]
@@ -108,6 +112,19 @@ class Description:
     def temperature_label(self) -> str:
         """Unit of temperatures as written on screen; empty in reduced units."""
         return "" if self.temperature_unit == units.REDUCED else self.temperature_unit
+
+    @property
+    def log_states(self) -> float | None:
+        """Natural logarithm of the declared number of states; None if none is declared."""
+        if self.states is None:
+            return None
+        base, power = base_and_power(self.states)
+        return power * math.log(base)
+
+    @property
+    def normalisations(self) -> dict[str, str]:
+        """What each recorded observable is: ``"total"``, ``"per site"`` or ``"plain"``."""
+        return {each.name: each.normalisation for each in self.observables}
 
     def as_dict(self) -> dict[str, Any]:
         """Plain data, for a file."""
@@ -246,6 +263,37 @@ class DensityOfStates:
     def sharing(self) -> NDArray[np.float64]:
         """Sharing across the cut above each run but the hottest, cold to hot, in independent samples, shape (K - 1,)."""
         return self.estimate.sharing[::-1]
+
+    def quantities(self, names: Iterable[str]) -> list[Quantity]:
+        """Quantities by name, as this object can answer them.
+
+        Raises
+        ------
+        NotInFileError
+            A name is not among those that can be asked.
+        """
+        return named(names, self.description.normalisations)
+
+    @property
+    def quantity_names(self) -> tuple[str, ...]:
+        """Names of everything that can be asked."""
+        return tuple(available(self.description.normalisations))
+
+    def choices(self) -> list[str]:
+        """What somebody decided by hand, in words."""
+        description = self.description
+        made = []
+        if description.weighting != "independent":
+            made.append("weighting: all samples alike, not by statistical inefficiency")
+        if description.resolution is not None:
+            made.append(f"resolution: {description.resolution:g} {description.energy_unit}")
+        made += [
+            f"discard: {run.decision.discard} (run {run.name})"
+            for run in self.runs
+            if run.decision.discard != "auto"
+        ]
+        made += [f"left out: {each.name} ({each.reason})" for each in self.left_out]
+        return made
 
     def __repr__(self) -> str:
         title = f" {self.description.title!r}" if self.description.title else ""

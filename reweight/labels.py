@@ -8,7 +8,14 @@ from __future__ import annotations
 
 from reweight.units import REDUCED, canonical_unit, per_kelvin
 
-__all__ = ["error_attributes", "per_count_unit", "temperature_attributes", "value_attributes"]
+__all__ = [
+    "energy_unit_label",
+    "error_attributes",
+    "per_temperature",
+    "product_unit",
+    "temperature_attributes",
+    "value_attributes",
+]
 
 Attributes = dict[str, str]
 
@@ -21,9 +28,17 @@ def temperature_attributes(temperature_unit: str) -> Attributes:
     return attributes
 
 
-def per_count_unit(unit: str, per: str | None) -> str:
-    """Long names say per what an answer is; UDUNITS has no atoms, so the unit itself is unchanged."""
-    return unit if per is None else f"{unit} per {per}"
+def per_temperature(unit: str, temperature_unit: str) -> str:
+    """UDUNITS spelling of a unit divided by the unit of temperature differences."""
+    if temperature_unit == REDUCED:
+        return unit
+    return "K-1" if unit == "1" else per_kelvin(unit)
+
+
+def product_unit(first: str, second: str) -> str:
+    """UDUNITS spelling of a product."""
+    factors = [unit for unit in (first, second) if unit != "1"]
+    return " ".join(factors) or "1"
 
 
 def value_attributes(

@@ -37,6 +37,7 @@ from scipy.optimize import brentq
 from scipy.special import expit, logsumexp
 
 from reweight.errors import ConvergenceError
+from reweight.products import COLUMNS, product
 
 __all__ = ["Solution", "cut_sharing", "pairwise_start", "solution_at", "solve"]
 
@@ -121,7 +122,7 @@ def _state(exponents: Array, free: Array) -> tuple[Array, Array]:
 def hessian(weights: Array, probabilities: Array) -> Array:
     """Second derivative of the objective, shape (K, K); rows sum to zero."""
     weighted = probabilities * weights
-    return np.asarray(np.diag(weighted.sum(axis=1)) - weighted @ probabilities.T)
+    return np.asarray(np.diag(weighted.sum(axis=1)) - product(weighted, probabilities.T))
 
 
 def solve_reduced(matrix: Array, right: Array, reference: int) -> Array:
@@ -136,10 +137,20 @@ def solve_reduced(matrix: Array, right: Array, reference: int) -> Array:
     solution = np.zeros_like(right)
     if keep.any():
         block = matrix[np.ix_(keep, keep)]
-        scale = 1 / np.sqrt(np.diag(block))
+        diagonal = np.diag(block)
+        if not (diagonal > 0).all():
+            raise np.linalg.LinAlgError("a run shares no energies with any other")
+        scale = 1 / np.sqrt(diagonal)
         scaled = block * scale * scale[:, None]
-        column = scale if right.ndim == 1 else scale[:, None]
-        solution[keep] = column * cho_solve(cho_factor(scaled), column * right[keep])
+        factor = cho_factor(scaled)
+        if right.ndim == 1:
+            solution[keep] = scale * cho_solve(factor, scale * right[keep])
+            return solution
+        for start in range(0, right.shape[1], COLUMNS):
+            sides = right[keep, start : start + COLUMNS]
+            solution[keep, start : start + COLUMNS] = scale[:, None] * cho_solve(
+                factor, scale[:, None] * sides
+            )
     return solution
 
 

@@ -23,6 +23,8 @@ def bracket(value: float, standard_error: float, digits: int = 2) -> str:
     --------
     >>> bracket(100.02147, 0.00035), bracket(1453.06, 35.4), bracket(0.5, 0.0996)
     ('100.02147(35)', '1453(35)', '0.50(10)')
+    >>> bracket(213.0, 104.0, digits=1)
+    '213(104)'
     """
     if not math.isfinite(value):
         return str(value)
@@ -30,7 +32,9 @@ def bracket(value: float, standard_error: float, digits: int = 2) -> str:
         return f"{value:.10g}"
     from uncertainties import ufloat  # heavy, and only display needs it
 
-    return f"{ufloat(value, standard_error):.{digits}uS}"
+    # Fixed point as long as that is readable: 213(104), not 2(1)e+02.
+    fixed = "f" if 1e-4 <= max(abs(value), standard_error) < 1e7 else ""
+    return f"{ufloat(value, standard_error):.{digits}u{fixed}S}"
 
 
 def significant(value: float, digits: int = 4) -> str:

@@ -13,13 +13,14 @@ from reweight.density_of_states import DensityOfStates, Description, LeftOut, Ob
 from reweight.errors import InputError
 from reweight.runs import as_tree, file_sources, tree_sources
 from reweight.study import Study, load_study
+from reweight.study.values import number_of_states
 from reweight.units import REDUCED
 from reweight.version import VERSION
 
 if TYPE_CHECKING:
     import xarray as xr
 
-__all__ = ["combine"]
+__all__ = ["combine", "combine_study"]
 
 
 def combine(
@@ -30,6 +31,8 @@ def combine(
     temperature_unit: str | None = None,
     count: int | None = None,
     per: str = "particle",
+    states: str | None = None,
+    ground_degeneracy: int | None = None,
     title: str = "",
     weighting: str = "independent",
     discard: int | str = "auto",
@@ -51,6 +54,10 @@ def combine(
     count : int, optional
         Number of particles or sites, for answers per count.
     per, title : str
+    states : str, optional
+        Total number of states, such as ``"2^256"``; makes the density of states absolute if beta = 0 is in reach.
+    ground_degeneracy : int, optional
+        Degeneracy of the ground level; does the same if that level is visited often enough.
     weighting : {"independent", "samples"}
         Weight samples by statistical inefficiency, or all alike.
     discard : int or str
@@ -88,7 +95,7 @@ def combine(
                 "a study file says temperatures, units, count and observables itself; they must not be given again."
             )
         study = runs if isinstance(runs, Study) else load_study(runs)
-        return _combine_study(study, workers=workers, progress=progress)
+        return combine_study(study, workers=workers, progress=progress)
     tree = as_tree(
         runs,
         temperatures=temperatures,
@@ -102,6 +109,8 @@ def combine(
         or tree.attrs.get("temperature_unit", REDUCED if energy_unit in (None, REDUCED) else "K"),
         count=count if count is not None else tree.attrs.get("count"),
         per=tree.attrs.get("per", per),
+        states=None if states is None else _number_of_states(states),
+        ground_degeneracy=ground_degeneracy,
         weighting=_one_of("weighting", weighting, ("independent", "samples")),
         observables=_described(tree, observables),
     )
@@ -116,7 +125,10 @@ def combine(
     )
 
 
-def _combine_study(study: Study, *, workers: int, progress: Progress | None) -> DensityOfStates:
+def combine_study(
+    study: Study, *, connected: bool = True, workers: int = WORKERS, progress: Progress | None = None
+) -> DensityOfStates:
+    """Combine the runs of a study; `connected` as in :func:`reweight.combining.combine_sources`."""
     system = study.system
     description = Description(
         title=study.title,
@@ -152,9 +164,17 @@ def _combine_study(study: Study, *, workers: int, progress: Progress | None) -> 
         ],
         study_text=study.text,
         provenance={"version": VERSION},
+        connected=connected,
         workers=workers,
         progress=progress,
     )
+
+
+def _number_of_states(text: str) -> str:
+    try:
+        return number_of_states(text)
+    except ValueError as error:
+        raise InputError(f"states {error}") from None
 
 
 def _one_of(name: str, value: str, allowed: tuple[str, ...]) -> str:

@@ -12,6 +12,7 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
@@ -38,7 +39,7 @@ class SampleBySample:
     counts: Array
     free_energies: Array
 
-    @property
+    @cached_property
     def log_denominator(self) -> Array:
         """``ln sum_i n_i exp(f_i - beta_i E)`` of every sample, shape (N,)."""
         return _log_denominator(self.energies, self.beta, self.counts, self.free_energies)

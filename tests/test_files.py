@@ -42,16 +42,21 @@ def test_mode_follows_the_umask(tmp_path):
 @pytest.mark.parametrize("accident", [RuntimeError, KeyboardInterrupt, SystemExit, GeneratorExit])
 def test_accident_leaves_the_old_file_and_nothing_else(tmp_path, accident):
     (tmp_path / "out").write_text("old")
-    with pytest.raises(accident), replacing(tmp_path / "out", force=True) as beside:
-        beside.write_text("half")
-        raise accident
+
+    def work():
+        with replacing(tmp_path / "out", force=True) as beside:
+            beside.write_text("half")
+            raise accident
+
+    with pytest.raises(accident):
+        work()
     assert listing(tmp_path) == ["out"]
     assert (tmp_path / "out").read_text() == "old"
 
 
 def test_existing_file_is_replaced_only_on_request(tmp_path):
     (tmp_path / "out").write_text("old")
-    with pytest.raises(OutputError, match="a file of that name exists.*--force"):
+    with pytest.raises(OutputError, match=r"a file of that name exists.*--force"):
         write_text(tmp_path / "out", "new")
     assert (tmp_path / "out").read_text() == "old"
     write_text(tmp_path / "out", "new", force=True)

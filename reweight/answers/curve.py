@@ -16,7 +16,6 @@ from reweight.density_of_states import DensityOfStates
 from reweight.errors import InputError, OutOfReachError
 from reweight.labels import error_attributes, temperature_attributes, value_attributes
 from reweight.notation import significant
-from reweight.quantities.catalogue import named
 from reweight.quantities.quantity import Measure
 from reweight.uncertainty.intervals import check_level, half_width
 
@@ -26,6 +25,7 @@ Array = NDArray[np.float64]
 
 DEFAULT_QUANTITIES = ("energy", "heat_capacity")
 DEFAULT_POINTS = 101
+PER_KELVIN = (Measure.ENERGY_PER_KELVIN, Measure.OBSERVABLE_PER_KELVIN)
 
 
 def curve(
@@ -36,6 +36,7 @@ def curve(
     lowest: float | None = None,
     highest: float | None = None,
     points: int = DEFAULT_POINTS,
+    reference: float | None = None,
     level: float = 0.95,
     per_count: bool = False,
     energy_unit: str | None = None,
@@ -52,6 +53,8 @@ def curve(
         `highest`, which default to the ends of the reach.
     of : str or sequence of str
         Names of quantities.
+    reference : float, optional
+        Temperature from which entropies and free energies are counted; by default that of the coldest run.
     level : float
         Of the confidence intervals.
     per_count : bool
@@ -65,7 +68,8 @@ def curve(
     -------
     xarray.Dataset
         On ``temperature``: for every quantity ``X``, ``X_standard_error``, ``X_interval`` (also on ``bound``),
-        ``X_within_reach``; besides, ``effective_sample_size`` and ``within_reach`` (of all quantities asked).
+        ``X_within_reach`` and ``X_variance_share`` (also on ``run``: which run makes how much of the variance);
+        besides, ``effective_sample_size`` and ``within_reach`` (of all quantities asked).
         Values out of reach are NaN.  Errors at neighbouring temperatures are strongly correlated: do not fit a
         curve to them as if they were independent.
 
@@ -89,7 +93,7 @@ def curve(
     True
     """
     check_level(level)
-    quantities = named([of] if isinstance(of, str) else of)
+    quantities = combined.quantities([of] if isinstance(of, str) else of)
     if temperature is None:
         given = temperature_grid(
             combined, of=[q.name for q in quantities], lowest=lowest, highest=highest, points=points
@@ -98,7 +102,8 @@ def curve(
         given = np.atleast_1d(np.asarray(temperature, dtype=float))
     beta = combined.description.inverse_temperature(given)
     expressed = [presentation(combined, q, per_count=per_count, energy_unit=energy_unit) for q in quantities]
-    evaluations = evaluate(combined, quantities, beta)
+    origin = None if reference is None else float(combined.description.inverse_temperature(reference))
+    evaluations = evaluate(combined, quantities, beta, reference=origin)
     dataset = xr.Dataset(
         coords={
             "temperature": (
@@ -107,6 +112,7 @@ def curve(
                 temperature_attributes(combined.description.temperature_unit),
             ),
             "bound": ("bound", np.array(["lower", "upper"])),
+            "run": ("run", np.array([run.name for run in combined.runs])),
         }
     )
     for evaluation, shown in zip(evaluations, expressed, strict=True):
@@ -115,12 +121,15 @@ def curve(
         value, error, half = (
             np.where(keep, each * shown.factor, np.nan) for each in _numbers(evaluation, level)
         )
+        long_name = quantity.long_name
+        if quantity.from_reference:
+            long_name += f", counted from {significant(_reference(combined, reference))}"
         attributes = value_attributes(
             quantity.label,
-            quantity.long_name,
+            long_name,
             shown.unit,
             per=shown.per,
-            per_kelvin_unit=quantity.measure is Measure.ENERGY_PER_KELVIN,
+            per_kelvin_unit=quantity.measure in PER_KELVIN,
         )
         label = quantity.label
         dataset[label] = ("temperature", value, attributes)
@@ -134,6 +143,11 @@ def curve(
             "temperature",
             evaluation.within_reach,
             {"long_name": f"the sampled energies support the {quantity.long_name}"},
+        )
+        dataset[f"{label}_variance_share"] = (
+            ("run", "temperature"),
+            np.where(keep, evaluation.variance.shares, np.nan),
+            {"units": "1", "long_name": f"share of each run in the variance of the {quantity.long_name}"},
         )
     dataset["effective_sample_size"] = (
         "temperature",
@@ -191,6 +205,10 @@ def answer(
     return shown
 
 
+def _reference(combined: DensityOfStates, reference: float | None) -> float:
+    return float(combined.temperatures.min()) if reference is None else reference
+
+
 def _numbers(evaluation: Evaluation, level: float) -> tuple[Array, Array, Array]:
     error = evaluation.variance.standard_error
     return evaluation.value, error, half_width(error, evaluation.variance.degrees_of_freedom, level)
@@ -198,7 +216,7 @@ def _numbers(evaluation: Evaluation, level: float) -> tuple[Array, Array, Array]
 
 def common_reach(combined: DensityOfStates, of: Sequence[str] = DEFAULT_QUANTITIES) -> Reach:
     """Range over which all the quantities can be answered; NaN ends if there is none."""
-    ranges = [reach(combined, quantity) for quantity in named(of)]
+    ranges = [reach(combined, name) for name in of]
     coldest = max(ranges, key=lambda r: np.inf if r.empty else r.lowest)
     hottest = min(ranges, key=lambda r: -np.inf if r.empty else r.highest)
     if coldest.empty or hottest.empty or coldest.lowest > hottest.highest:

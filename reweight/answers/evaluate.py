@@ -22,7 +22,7 @@ __all__ = ["Evaluation", "evaluate", "values"]
 
 Array = NDArray[np.float64]
 
-NODES_AT_ONCE = 2**21  # nodes times temperatures held in memory at a time
+NODES_AT_ONCE = 2**18  # nodes times temperatures held in memory at a time; few enough for one thread
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -56,6 +56,17 @@ class Evaluation:
     within_reach: NDArray[np.bool_]
 
 
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class Piece:
+    """One quantity at as many temperatures as are held in memory at a time."""
+
+    value: Array
+    blocks: list[Array]
+    effective_sample_size: Array
+    end_mass: Array
+    carriers: Array
+
+
 def _pieces(combined: DensityOfStates, beta: Array) -> list[Array]:
     at_once = max(1, NODES_AT_ONCE // combined.estimate.energies.size)
     return [beta[start : start + at_once] for start in range(0, beta.size, at_once)]
@@ -70,9 +81,21 @@ def values(combined: DensityOfStates, quantity: Quantity, beta: Array) -> Array:
     return np.concatenate([quantity.value(_moments(combined, piece)) for piece in _pieces(combined, beta)])
 
 
-def evaluate(combined: DensityOfStates, quantities: Sequence[Quantity], beta: Array) -> list[Evaluation]:
-    """Values, block sums, variances and reach of several quantities at the same inverse temperatures."""
-    gathered: list[list[tuple[Array, list[Array], Array, Array, Array]]] = [[] for _ in quantities]
+def evaluate(
+    combined: DensityOfStates, quantities: Sequence[Quantity], beta: Array, *, reference: float | None = None
+) -> list[Evaluation]:
+    """Values, block sums, variances and reach of several quantities at the same inverse temperatures.
+
+    Parameters
+    ----------
+    reference : float, optional
+        Inverse temperature from which quantities that are only determined up to a constant are counted; by default
+        that of the coldest run.
+    """
+    needs_reference = any(quantity.from_reference for quantity in quantities)
+    if needs_reference:
+        beta = np.append(beta, _reference_beta(combined, reference))
+    gathered: list[list[Piece]] = [[] for _ in quantities]
     for piece in _pieces(combined, beta):
         moments = _moments(combined, piece)
         size = moments.canonical.effective_sample_size()
@@ -80,32 +103,53 @@ def evaluate(combined: DensityOfStates, quantities: Sequence[Quantity], beta: Ar
         for place, quantity in enumerate(quantities):
             influences = influence(quantity, moments)
             gathered[place].append(
-                (
-                    quantity.value(moments),
-                    block_sums(combined.estimate, influences),
-                    size,
-                    ends,
-                    carriers(moments.canonical, influences),
+                Piece(
+                    value=quantity.value(moments),
+                    blocks=block_sums(combined.estimate, influences),
+                    effective_sample_size=size,
+                    end_mass=ends,
+                    carriers=carriers(moments.canonical, influences),
                 )
             )
-    evaluations = []
-    for quantity, pieces in zip(quantities, gathered, strict=True):
-        blocks = [
-            np.concatenate([piece[1][i] for piece in pieces], axis=1) for i in range(len(combined.runs))
-        ]
-        ends = np.concatenate([piece[3] for piece in pieces], axis=1)
-        carrying = np.concatenate([piece[4] for piece in pieces])
-        evaluations.append(
-            Evaluation(
-                quantity=quantity,
-                beta=beta,
-                value=np.concatenate([piece[0] for piece in pieces]),
-                blocks=blocks,
-                variance=variance(blocks),
-                effective_sample_size=np.concatenate([piece[2] for piece in pieces]),
-                end_mass=ends,
-                carriers=carrying,
-                within_reach=supported(quantity, ends, carrying),
-            )
-        )
-    return evaluations
+    return [
+        _evaluation(quantity, beta, pieces, needs_reference)
+        for quantity, pieces in zip(quantities, gathered, strict=True)
+    ]
+
+
+def _reference_beta(combined: DensityOfStates, reference: float | None) -> float:
+    return float(combined.estimate.beta.max()) if reference is None else reference
+
+
+def _evaluation(quantity: Quantity, beta: Array, pieces: list[Piece], needs_reference: bool) -> Evaluation:
+    """Join the pieces; the last inverse temperature is the reference, if any quantity needs one."""
+    value = np.concatenate([piece.value for piece in pieces])
+    blocks = [
+        np.concatenate(parts, axis=1) for parts in zip(*(piece.blocks for piece in pieces), strict=True)
+    ]
+    ends = np.concatenate([piece.end_mass for piece in pieces], axis=1)
+    carrying = np.concatenate([piece.carriers for piece in pieces])
+    size = np.concatenate([piece.effective_sample_size for piece in pieces])
+    within = supported(quantity, ends, carrying)
+    if needs_reference:
+        if quantity.from_reference:
+            value = value - value[-1]
+            blocks = [block - block[:, -1:] for block in blocks]
+            # A difference is supported where both of its ends are.
+            ends = np.maximum(ends, ends[:, -1:])
+            carrying = np.minimum(carrying, carrying[-1])
+            within = within & within[-1]
+        beta, value, size, within = beta[:-1], value[:-1], size[:-1], within[:-1]
+        ends, carrying = ends[:, :-1], carrying[:-1]
+        blocks = [block[:, :-1] for block in blocks]
+    return Evaluation(
+        quantity=quantity,
+        beta=beta,
+        value=value,
+        blocks=blocks,
+        variance=variance(blocks),
+        effective_sample_size=size,
+        end_mass=ends,
+        carriers=carrying,
+        within_reach=within,
+    )

@@ -21,7 +21,6 @@ from reweight.answers.presentation import presentation
 from reweight.answers.reach import reach
 from reweight.density_of_states import DensityOfStates
 from reweight.errors import InputError, OutOfReachError
-from reweight.quantities.catalogue import named
 from reweight.quantities.quantity import Quantity
 from reweight.uncertainty.intervals import check_level, half_width
 from reweight.uncertainty.window import correlation, variance
@@ -134,7 +133,7 @@ def peaks(
         The limits are out of order.
     """
     check_level(level)
-    (quantity,) = named([of])
+    (quantity,) = combined.quantities([of])
     shown = presentation(combined, quantity, per_count=per_count, energy_unit=energy_unit)
     cold, hot = _limits(combined, quantity, lowest, highest, beyond_reach=beyond_reach)
     grid = _grid(combined, hot, cold)
@@ -159,7 +158,7 @@ def _limits(
     beyond_reach: bool,
 ) -> tuple[float, float]:
     """Inverse temperatures between which to look: the reach, narrowed by what was asked (or replaced by it)."""
-    within = reach(combined, quantity)
+    within = reach(combined, quantity.name)
     if within.empty and not (beyond_reach and lowest is not None and highest is not None):
         raise OutOfReachError(
             f"the runs must support {quantity.name} somewhere to find its peak; got too few independent samples "

@@ -6,9 +6,9 @@ from dataclasses import dataclass
 
 from reweight.density_of_states import DensityOfStates
 from reweight.errors import InputError
-from reweight.labels import energy_unit_label
+from reweight.labels import energy_unit_label, per_temperature, product_unit
 from reweight.quantities.quantity import Measure, Quantity, Scaling
-from reweight.units import energy_factor
+from reweight.units import canonical_unit, energy_factor
 
 __all__ = ["Presentation", "presentation"]
 
@@ -45,12 +45,15 @@ def presentation(
     description = combined.description
     asked = description.energy_unit if energy_unit is None else energy_unit
     conversion = energy_factor(description.energy_unit, asked)
-    unit = {
-        Measure.ENERGY: energy_unit_label(asked),
-        Measure.ENERGY_PER_KELVIN: energy_unit_label(asked, kelvin=True),
-        Measure.NUMBER: "1",
+    own = _observable_unit(combined, quantity.observable)
+    unit, factor = {
+        Measure.ENERGY: (energy_unit_label(asked), conversion),
+        Measure.ENERGY_PER_KELVIN: (energy_unit_label(asked, kelvin=True), conversion),
+        Measure.OBSERVABLE: (own, 1.0),
+        Measure.OBSERVABLE_PER_KELVIN: (per_temperature(own, description.temperature_unit), 1.0),
+        Measure.OBSERVABLE_ENERGY: (product_unit(own, energy_unit_label(asked)), conversion),
+        Measure.NUMBER: ("1", 1.0),
     }[quantity.measure]
-    factor = conversion if quantity.measure in (Measure.ENERGY, Measure.ENERGY_PER_KELVIN) else 1.0
     if not per_count or quantity.scaling is Scaling.INTENSIVE:
         return Presentation(factor=factor, unit=unit, per=None)
     if description.count is None:
@@ -59,3 +62,8 @@ def presentation(
             "Add count (and per, its name) to [system] and combine again."
         )
     return Presentation(factor=factor / description.count, unit=unit, per=description.per)
+
+
+def _observable_unit(combined: DensityOfStates, observable: str) -> str:
+    units = {each.name: canonical_unit(each.unit) for each in combined.description.observables}
+    return units.get(observable, "1")

@@ -108,11 +108,24 @@ def supported(quantity: Quantity, ends: Array, carrying: Array) -> NDArray[np.bo
     )
 
 
-def reach(combined: DensityOfStates, quantity: Quantity) -> Reach:
+def reach(combined: DensityOfStates, of: str = "heat_capacity") -> Reach:
     """Range of temperatures over which a quantity can be answered.
 
+    Parameters
+    ----------
+    combined : DensityOfStates
+    of : str
+        Name of the quantity.
+
+    Returns
+    -------
+    Reach
+
+    Notes
+    -----
     The longest unbroken stretch, its ends found by bisection; single temperatures inside are still judged one by one.
     """
+    (quantity,) = combined.quantities([of])
     estimate = combined.estimate
 
     def judge(beta: Array) -> tuple[NDArray[np.bool_], Array, Array]:

@@ -20,13 +20,22 @@ if TYPE_CHECKING:
 __all__ = ["curve_figure", "draw_curve", "draw_peak", "simulated_marks"]
 
 
+FEW = 12
+
+
 def draw_curve(axes: Axes, dataset: xr.Dataset, label: str) -> Axes:
     """Draw one quantity of a dataset from :func:`reweight.curve` against temperature."""
     temperature = dataset["temperature"].to_numpy()
+    value = dataset[label].to_numpy()
     interval = dataset[f"{label}_interval"].to_numpy()
-    axes.fill_between(temperature, interval[:, 0], interval[:, 1], color=BAND, linewidth=0)
-    few = temperature.size < 12
-    axes.plot(temperature, dataset[label].to_numpy(), color=LINE, marker="o" if few else "", markersize=3)
+    if temperature.size < FEW:  # single temperatures: a line between them would claim what was not asked
+        reach = np.abs(interval - value[:, None]).T
+        axes.errorbar(
+            temperature, value, yerr=reach, color=LINE, linestyle="none", marker="o", markersize=3, capsize=2
+        )
+    else:
+        axes.fill_between(temperature, interval[:, 0], interval[:, 1], color=BAND, linewidth=0)
+        axes.plot(temperature, value, color=LINE)
     axes.set_ylabel(_axis_text(dataset[label].attrs["long_name"], dataset[label].attrs["units"]))
     axes.set_xlabel(_axis_text("temperature", dataset["temperature"].attrs["units"]))
     return axes
@@ -38,13 +47,12 @@ def simulated_marks(axes: Axes, combined: DensityOfStates) -> Axes:
     inside = [t for t in combined.temperatures if np.isfinite(t) and low <= t <= high]
     axes.plot(
         inside,
-        np.zeros(len(inside)),
+        np.full(len(inside), 0.03),
         transform=axes.get_xaxis_transform(),
         linestyle="none",
-        marker="|",
-        markersize=7,
+        marker="^",
+        markersize=3.5,
         color=MARK,
-        clip_on=False,
     )
     return axes
 
@@ -80,10 +88,9 @@ def curve_figure(combined: DensityOfStates, dataset: xr.Dataset, marked: Sequenc
             axes.label_outer()
         for peak in marked:
             draw_peak(panels[-1], peak)
-        level = 100 * dataset.attrs["level"]
-        panels[0].set_title(
-            f"band: {level:g} % interval; ticks: simulated temperatures", fontsize=7, loc="left"
-        )
+        shape = "bars" if dataset.sizes["temperature"] < FEW else "band"
+        text = f"{shape}: {100 * dataset.attrs['level']:g} % interval; triangles: simulated temperatures"
+        panels[0].set_title(text, fontsize=7, loc="left")
     return figure
 
 

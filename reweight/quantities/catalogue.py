@@ -2,23 +2,44 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+from collections.abc import Callable, Iterable, Mapping
 
 from reweight.errors import NotInFileError
 from reweight.quantities.energy import MeanEnergy
+from reweight.quantities.entropy import Entropy
+from reweight.quantities.free_energy import FreeEnergy
 from reweight.quantities.heat_capacity import HeatCapacity
-from reweight.quantities.quantity import Quantity
+from reweight.quantities.observable_mean import ObservableMean
+from reweight.quantities.observable_slope import ObservableCovariance, ObservableSlope
+from reweight.quantities.quantity import Quantity, Scaling
 
 __all__ = ["available", "named"]
 
+OF_ENERGY: tuple[Callable[[], Quantity], ...] = (MeanEnergy, HeatCapacity, Entropy, FreeEnergy)
+OF_OBSERVABLE: tuple[Callable[[str, Scaling], Quantity], ...] = (
+    ObservableMean,
+    ObservableSlope,
+    ObservableCovariance,
+)
 
-def available() -> dict[str, Quantity]:
-    """Quantities by the name they are asked by."""
-    quantities: list[Quantity] = [MeanEnergy(), HeatCapacity()]
+SCALINGS = {"total": Scaling.EXTENSIVE, "per site": Scaling.INTENSIVE, "plain": Scaling.INTENSIVE}
+
+
+def available(normalisations: Mapping[str, str]) -> dict[str, Quantity]:
+    """Quantities by the name they are asked by.
+
+    Parameters
+    ----------
+    normalisations : mapping
+        From the names of the recorded observables to ``"total"``, ``"per site"`` or ``"plain"``.
+    """
+    quantities = [make() for make in OF_ENERGY]
+    for observable, normalisation in normalisations.items():
+        quantities += [make(observable, SCALINGS[normalisation]) for make in OF_OBSERVABLE]
     return {quantity.name: quantity for quantity in quantities}
 
 
-def named(names: Iterable[str]) -> list[Quantity]:
+def named(names: Iterable[str], normalisations: Mapping[str, str]) -> list[Quantity]:
     """Look quantities up.
 
     Raises
@@ -26,7 +47,7 @@ def named(names: Iterable[str]) -> list[Quantity]:
     NotInFileError
         A name is not among those that can be asked; the error lists them.
     """
-    known = available()
+    known = available(normalisations)
     unknown = [name for name in names if name not in known]
     if unknown:
         raise NotInFileError(

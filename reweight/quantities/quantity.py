@@ -26,7 +26,6 @@ class Measure(Enum):
     OBSERVABLE = "observable"
     OBSERVABLE_PER_KELVIN = "observable per kelvin"
     OBSERVABLE_ENERGY = "observable times energy"
-    OBSERVABLE_SQUARED = "observable squared"
     NUMBER = "number"
 
 

@@ -67,9 +67,9 @@ def with_point(field: str, decimal: str) -> str:
 
 def split(line: str, delimiter: str) -> list[str]:
     """Fields of a line, without the blanks around them."""
-    if delimiter == BLANKS:
-        return re.split(r"[ \t]+", line.strip(" \t\r\n"))
-    return [field.strip(" \t") for field in line.rstrip("\r\n").split(delimiter)]
+    line = line.rstrip("\r\n")
+    fields = re.split(r"[ \t]+", line.strip(" \t")) if delimiter == BLANKS else line.split(delimiter)
+    return [field.strip(" \t\v\f") for field in fields]
 
 
 def find_layout(path: Path, lines: LineStream, declared: Format) -> Layout:
@@ -172,7 +172,7 @@ def _words(text: str, delimiter: str, count: int) -> tuple[str, ...] | None:
     for candidate in (delimiter, _guessed_delimiter(text, "."), BLANKS):
         # "potential [kJ/mol]" is one name where blanks separate
         line = _UNIT_AFTER_BLANK.sub("", text) if candidate == BLANKS else text
-        words = tuple(word.strip("\"'") for word in split(line, candidate))
+        words = tuple(word.strip("\"',;") for word in split(line, candidate))
         if len(words) == count:
             return words
     return None

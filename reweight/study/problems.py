@@ -40,12 +40,12 @@ _NOT_BUILT_YET: tuple[tuple[str, object], ...] = (
 
 _MODELS: Mapping[tuple[str, ...], type[BaseModel]] = {
     (): Study,
+    ("run",): Run,
     ("system",): System,
     ("conditions",): Conditions,
     ("format",): Format,
     ("columns",): Columns,
     ("observables", "*"): Observable,
-    ("run",): Run,
 }
 
 _EXPECTATIONS = {
@@ -157,8 +157,6 @@ def _run_disagreements(run: Run, study: Study) -> Iterator[tuple[str, str]]:
             yield "temperature", f"must lie above absolute zero{zero}; got {run.temperature}"
         elif not math.isfinite(run.beta(study)):
             yield "temperature", f"must be large enough for 1 / (k_B T) to be a number; got {run.temperature}"
-    if not all(file.strip() and file.isprintable() for file in run.files):
-        yield "files", f"must hold names of files; got {list(run.files)!r}"
     if not run.use and not run.reason.strip():
         yield "reason", "must say why the run is left out, because use = false; it is printed and archived"
 
@@ -204,10 +202,10 @@ def _suggestion(location: Location) -> str:
         if other != section
         and location[-1] in {field.alias or name for name, field in model.model_fields.items()}
     ]
-    if near:
-        return f" Did you mean {near[0]!r}?"
     if elsewhere:
         return f" Did you mean {elsewhere[0].replace('*', 'NAME')}?"
+    if near:
+        return f" Did you mean {near[0]!r}?"
     return f" Known here: {', '.join(known)}"
 
 

@@ -21,6 +21,7 @@ from reweight.study.values import (
     Discard,
     Encoding,
     EnergyUnit,
+    FileNames,
     Moments,
     Name,
     Normalisation,
@@ -31,7 +32,6 @@ from reweight.study.values import (
     RunName,
     SummedColumns,
     Temperature,
-    TextList,
     TotalOrPer,
     Unit,
     base_and_power,
@@ -116,7 +116,7 @@ class Run(_Table):
     name: RunName
     temperature: Temperature | None = None
     inverse_temperature: NotNegativeNumber | None = Field(default=None, alias="beta")
-    files: Annotated[TextList, Field(min_length=1)]
+    files: FileNames
     discard: Discard = "auto"
     use: bool = True
     reason: str = ""
@@ -129,7 +129,7 @@ class Run(_Table):
         files = listed(values.get("files"))
         if not isinstance(files, tuple) or not files or not isinstance(files[0], str):
             return {**values, "name": "unnamed"}  # the missing files are the problem to be reported
-        return {**values, "name": PurePath(files[0].removesuffix(".gz")).stem}
+        return {**values, "name": PurePath(files[0].removesuffix(".gz")).stem or "unnamed"}
 
     def beta(self, study: Study) -> float:
         """Inverse temperature in 1 / energy unit of the study; 0 for an infinite temperature."""

@@ -21,6 +21,7 @@ __all__ = [
     "Discard",
     "Encoding",
     "EnergyUnit",
+    "FileNames",
     "Moments",
     "Name",
     "Normalisation",
@@ -31,7 +32,6 @@ __all__ = [
     "RunName",
     "SummedColumns",
     "Temperature",
-    "TextList",
     "TotalOrPer",
     "Unit",
     "base_and_power",
@@ -91,7 +91,8 @@ def _any_unit(value: str) -> str:
     return value
 
 
-def _states(value: str) -> str:
+def number_of_states(value: str) -> str:
+    """Check a number of states written as base^power."""
     # Two short whole numbers, so nothing has to be evaluated and no power of them is ever formed.
     if re.fullmatch(r"\s*[0-9]{1,18}\s*\^\s*[0-9]{1,18}\s*", value) is None or min(base_and_power(value)) < 1:
         raise ValueError(f'must be a number of states written "base^power", like "2^256"; got {value!r}')
@@ -153,6 +154,12 @@ def _comment_prefixes(value: tuple[str, ...]) -> tuple[str, ...]:
     return value
 
 
+def _file_names(value: tuple[str, ...]) -> tuple[str, ...]:
+    if not value or not all(each.strip() and each.isprintable() for each in value):
+        raise ValueError(f"must hold names of files; got {list(value)!r}")
+    return value
+
+
 def _delimiter(value: str) -> str:
     single = {"tab": "\t", "blanks": " "}.get(value, value)
     if len(single) != 1 or single.isalnum() or single in '+-."\n\r':
@@ -187,11 +194,12 @@ PositiveNumber = Annotated[float, AfterValidator(_finite_and_positive)]
 NotNegativeNumber = Annotated[float, AfterValidator(_finite_and_not_negative)]
 Temperature = Annotated[float, AfterValidator(_number_or_infinite)]
 SummedColumns = Annotated[ColumnList, PlainValidator(_columns)]
-TextList = Annotated[tuple[str, ...], BeforeValidator(listed)]
+_TextList = Annotated[tuple[str, ...], BeforeValidator(listed)]
 TotalOrPer = Annotated[str, AfterValidator(_total_or_per)]
 Normalisation = Annotated[Literal["total", "per site", "plain"], BeforeValidator(_normalisation)]
-CommentPrefixes = Annotated[TextList, AfterValidator(_comment_prefixes)]
-NumberOfStates = Annotated[str, AfterValidator(_states)]
+CommentPrefixes = Annotated[_TextList, AfterValidator(_comment_prefixes)]
+FileNames = Annotated[_TextList, AfterValidator(_file_names)]
+NumberOfStates = Annotated[str, AfterValidator(number_of_states)]
 Moments = Annotated[tuple[int, ...], PlainValidator(_moments)]
 Discard = Annotated[str | int, PlainValidator(_discard)]
 Encoding = Annotated[str, AfterValidator(_encoding)]

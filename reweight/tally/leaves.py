@@ -16,7 +16,7 @@ M keys (panels or levels), p order (nodes a panel; 1 for levels), G groups.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -31,7 +31,7 @@ __all__ = ["Column", "LeafSums", "Nodes", "RunTally", "Thinned", "leaf_length"]
 MOST_LEAVES = 128
 BASE = 1024
 BATCH = 64 * BASE
-STRIDE = 8 * BASE  # rows handled at a time: their Chebyshev values fit the second-level cache
+STRIDE = 8 * BASE  # rows handled at a time: what belongs to them fits the second-level cache
 GROUPS_A_LEAF = 128
 
 
@@ -53,6 +53,8 @@ class Column:
 
 
 COUNT = Column()
+
+Locate = Callable[[slice], tuple[NDArray[np.int64], NDArray[np.float64]]]
 
 
 @dataclass(frozen=True, slots=True)
@@ -148,22 +150,26 @@ def _doublings(length: int, base: int) -> int:
     return (length // base).bit_length() - 1
 
 
-def _keys(
-    energies: NDArray[np.float64], nodes: Nodes
-) -> tuple[NDArray[Any], NDArray[np.int64], NDArray[np.float64]]:
-    """Keys present, each row's place among them, and its local coordinate."""
+def _placed(energies: NDArray[np.float64], nodes: Nodes) -> tuple[NDArray[Any], Locate]:
+    """Keys that may be present, and a function from a slice of the rows to their places and local coordinates."""
     if nodes.discrete:
-        keys, place = np.unique(energies, return_inverse=True)
-        return keys, place, energies
-    index, coordinate = panel_indices(energies, nodes.width)
-    lowest, highest = int(index.min()), int(index.max())
+        keys = np.unique(energies)
+        return keys, lambda here: (np.searchsorted(keys, energies[here]), energies[here])
+    ends, _ = panel_indices(np.array([energies.min(), energies.max()]), nodes.width)
+    lowest, highest = int(ends[0]), int(ends[1])
     if (
         highest - lowest < 4096
-    ):  # contiguous numbering costs nothing; otherwise never allocate from lowest to highest
-        index -= lowest
-        return np.arange(lowest, highest + 1), index.astype(np.int64), coordinate
+    ):  # numbering them all costs nothing; otherwise never allocate from lowest to highest
+
+        def locate(here: slice) -> tuple[NDArray[np.int64], NDArray[np.float64]]:
+            index, coordinate = panel_indices(energies[here], nodes.width)
+            index -= lowest
+            return index.astype(np.int64), coordinate
+
+        return np.arange(lowest, highest + 1), locate
+    index, coordinate = panel_indices(energies, nodes.width)
     keys, place = np.unique(index.astype(np.int64), return_inverse=True)
-    return keys, place, coordinate
+    return keys, lambda here: (place[here], coordinate[here])
 
 
 def column_values(
@@ -192,18 +198,22 @@ def leaf_sums(
     """
     count = rows.shape[0]
     base = min(length, BASE)
-    keys, place, coordinate = _keys(np.ascontiguousarray(rows[:, 0]), nodes)
+    keys, locate = _placed(np.ascontiguousarray(rows[:, 0]), nodes)
     weights = [None] + [np.ascontiguousarray(column_values(rows, c, observables)) for c in columns[1:]]
     leaf_count = -(-count // length)
     size, order = keys.size, nodes.order
     per_stride = STRIDE // base
+    longest = min(count, STRIDE)
+    buffer = np.empty((order, longest))
+    offsets = np.arange(longest) // base * size
     parts = []
     for start in range(0, count, STRIDE):
         here = slice(start, min(start + STRIDE, count))
         number = here.stop - here.start
         blocks = per_stride if length > base else -(-number // base)
-        bins = place[here] + np.arange(number) // base * size
-        values = chebyshev_values(coordinate[here], order)
+        place, coordinate = locate(here)
+        bins = place + offsets[:number]
+        values = chebyshev_values(coordinate, order, out=buffer[:, :number])
         total = np.empty((len(columns), order, blocks * size))
         for c, weight in enumerate(weights):
             for j in range(order):
@@ -337,7 +347,8 @@ class RunTally:
             self.thinned.sums = _pairwise(self.thinned.sums, 0, 1)
             self.thinned.squares = _pairwise(self.thinned.squares, 0, 1)
         self._batch = max(BATCH, int(self.leaves.rows[0]))
-        if self.nodes.discrete and not are_levels(self.leaves.keys.size, self.row_count):
+        absorbed = int(self.leaves.rows.sum())  # not row_count: how many rows wait depends on the chunks
+        if self.nodes.discrete and not are_levels(self.leaves.keys.size, absorbed):
             self._become_panels()
         return int(rows.shape[0])
 

@@ -75,8 +75,9 @@ def find_spacing(energies: NDArray[np.float64]) -> Spacing | None:
     if size.size < 3 or not are_levels(size.size, energies.size):
         return None
     centres = np.bincount(group, distinct) / size
-    smallest = float(np.diff(centres).min())
-    number = np.rint((centres - centres[0]) / smallest)
+    steps = np.diff(centres)
+    # Counted step by step: over many levels the blur of the smallest step would add up to a whole one.
+    number = np.concatenate([[0.0], np.cumsum(np.rint(steps / steps.min()))])
     step, offset = np.polyfit(number, centres, 1)
     doubt = float(np.abs(centres - offset - step * number).max())
     step = _roundest(float(step), doubt / number[-1])

@@ -77,9 +77,11 @@ def panel_indices(
     return index, scaled
 
 
-def chebyshev_values(coordinate: NDArray[np.float64], order: int = ORDER) -> NDArray[np.float64]:
-    """Chebyshev polynomials T_0 .. T_{order-1} of a coordinate, shape (order, N)."""
-    values = np.empty((order, coordinate.size))
+def chebyshev_values(
+    coordinate: NDArray[np.float64], order: int = ORDER, *, out: NDArray[np.float64] | None = None
+) -> NDArray[np.float64]:
+    """Chebyshev polynomials T_0 .. T_{order-1} of a coordinate, shape (order, N); into ``out`` if given."""
+    values = np.empty((order, coordinate.size)) if out is None else out
     values[0] = 1
     if order > 1:
         values[1] = coordinate

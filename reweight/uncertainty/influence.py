@@ -16,6 +16,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from reweight.estimate import Canonical, Estimate
+from reweight.products import product
 from reweight.quantities.moments import LOG_PARTITION, Moment, Moments
 from reweight.quantities.quantity import Quantity
 from reweight.tally.leaves import COUNT, Column
@@ -65,7 +66,7 @@ def with_free_energies(estimate: Estimate, direct: dict[Column, Array]) -> dict[
     """Add the answer's response to the shift of the free energies that the sample causes."""
     probabilities = estimate.solution.probabilities
     pulled = sum(estimate.column(column)[:, None] * phi for column, phi in direct.items())
-    direct[COUNT] = direct[COUNT] + probabilities.T @ estimate.spread(probabilities @ pulled)
+    direct[COUNT] = direct[COUNT] + product(probabilities.T, estimate.spread(product(probabilities, pulled)))
     return direct
 
 
@@ -75,7 +76,7 @@ def block_sums(estimate: Estimate, influences: Influence) -> list[Array]:
     for run in estimate.runs:
         total = None
         for column, phi in influences.columns.items():
-            part = run.weights[estimate.columns.index(column)] @ phi[run.index]
+            part = product(run.weights[estimate.columns.index(column)], phi[run.index])
             total = part if total is None else total + part
         assert total is not None
         blocks.append(centred(total, run.counts))

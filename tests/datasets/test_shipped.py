@@ -8,6 +8,7 @@ from dataclasses import replace
 import numpy as np
 import pytest
 from reweight.datasets import SHIPPED, make, shipped
+from reweight.datasets.bead_chain import GAS_CONSTANT
 from reweight.datasets.exact import canonical, lattice_log_degeneracies
 
 FOLDER = shipped("bead-chain").parent
@@ -76,6 +77,46 @@ def test_the_shipped_lattice_agrees_with_its_exact_energies():
 
         assert abs(blocks.mean() - expected) < 4 * standard_error
         assert standard_error < 0.01 * abs(expected)
+
+
+def shipped_chain_runs():
+    """Potential energies and radii of the shipped chain, each of shape (runs, rows)."""
+    names = [make.BEAD_CHAIN.file_name.format(temperature) for temperature in make.BEAD_CHAIN.temperatures]
+    tables = np.stack([np.loadtxt(shipped("bead-chain") / name) for name in names])
+    return tables[:, :, 1], tables[:, :, 2]
+
+
+def test_the_shipped_chain_collapses_within_its_temperatures():
+    """Fluctuations give each run's heat capacity: an inner one exceeds both ends by 4 standard errors (20 blocks)."""
+    energies, radii = (rows[:, 1000:] for rows in shipped_chain_runs())
+    thermal = GAS_CONSTANT * np.array(make.BEAD_CHAIN.temperatures)[:, None]
+    squares = ((energies - energies.mean(axis=1, keepdims=True)) / thermal) ** 2
+    blocks = squares.reshape(8, 20, -1).mean(axis=2)
+    heat_capacities, errors = blocks.mean(axis=1), blocks.std(axis=1, ddof=1) / np.sqrt(20)
+    top = int(np.argmax(heat_capacities))
+
+    assert 0 < top < 7
+    for end in (0, 7):
+        assert heat_capacities[top] - heat_capacities[end] > 4 * np.hypot(errors[top], errors[end])
+    assert radii[0].mean() < 0.75 * radii[-1].mean()
+
+
+def test_neighbouring_runs_of_the_shipped_chain_overlap():
+    """Common area of neighbouring energy histograms, 1 for equal ones: at least a half."""
+    energies = shipped_chain_runs()[0][:, 1000:]
+    edges = np.linspace(energies.min(), energies.max(), 60)
+    shares = np.array([np.histogram(run, edges)[0] for run in energies]) / energies.shape[1]
+
+    assert np.all(np.minimum(shares[:-1], shares[1:]).sum(axis=1) > 0.5)
+
+
+def test_cold_runs_of_the_shipped_chain_start_far_from_equilibrium_and_reach_it_early():
+    """The stretched start lies above the later mean by 3 standard deviations; 5 % of the rows suffice to get there."""
+    energies = shipped_chain_runs()[0][:2]
+    later = energies[:, 1000:]
+
+    assert np.all(energies[:, 0] > later.mean(axis=1) + 3 * later.std(axis=1))
+    assert np.all(energies[:, :500].min(axis=1) < later.mean(axis=1))
 
 
 def test_an_unknown_study_is_refused_with_the_known_names():

@@ -1,0 +1,151 @@
+"""``reweight runs``: a table of the runs, before or after they are combined."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import click
+from reweight.cli import options, screen
+
+if TYPE_CHECKING:
+    from reweight.density_of_states import DensityOfStates
+
+__all__ = ["one_in", "runs", "runs_record", "runs_table"]
+
+
+@click.command(short_help="Table of the runs: rows, transient, independent samples, overlap.")
+@click.argument("file", type=options.plain_path)
+@click.option(
+    "--inputs", is_flag=True, help="List the files, too: rows and their fate, first and last energy, hash."
+)
+@click.option("--json", "as_json", is_flag=True, help="Print JSON in place of the table.")
+@click.option("--quiet", is_flag=True, help="No messages beside the answer.")
+def runs(file: Path, inputs: bool, as_json: bool, quiet: bool) -> None:
+    """Show what each run is worth.
+
+    FILE is a study (its files are read, nothing is written, and runs that share no energies are shown all the same)
+    or a combined file.
+    """
+    combined = _load(file, quiet=quiet)
+    if as_json:
+        units = {
+            "energy": combined.description.energy_unit,
+            "temperature": combined.description.temperature_unit,
+        }
+        screen.print_json(
+            screen.envelope(
+                combined,
+                "runs",
+                level=None,
+                units=units,
+                runs=runs_record(combined),
+                sharing=combined.sharing,
+            )
+        )
+        return
+    header, rows = runs_table(combined, [int(place) for place in combined.cold_to_hot], energies=True)
+    screen.print_table(header, rows)
+    for each in combined.left_out:
+        click.echo(f"left out: {each.name} ({each.reason})")
+    if inputs:
+        click.echo()
+        print_inputs(combined)
+
+
+def _load(file: Path, *, quiet: bool) -> DensityOfStates:
+    if file.suffix.lower() != ".toml":
+        return screen.opened(file, quiet=quiet)
+    from reweight.studies import combine_study
+    from reweight.study import load_study
+
+    return combine_study(load_study(file), connected=False)
+
+
+def one_in(combined: DensityOfStates, place: int) -> str:
+    """How many samples are worth one independent one, as people say it."""
+    from reweight.notation import bracket
+
+    found = combined.runs[place].decision.inefficiency
+    if found.constant:
+        return "constant"
+    if found.value <= 1:
+        return "every one"
+    return f"one in {bracket(found.value, found.standard_error, digits=1)}"
+
+
+def runs_table(
+    combined: DensityOfStates, places: list[int], *, energies: bool = False
+) -> tuple[tuple[str, ...], list[tuple[str, ...]]]:
+    """Heading and rows of the table of runs."""
+    unit = combined.description.temperature_label
+    header: tuple[str, ...] = ("run", "temperature" + (f" [{unit}]" if unit else ""), "rows", "transient")
+    header += ("independent", "independent samples")
+    if energies:
+        header += ("first energy", "last energy")
+    header += ("shared with next hotter",)
+    order = list(combined.cold_to_hot)
+    rows = []
+    for place in places:
+        run, rank = combined.runs[place], order.index(place)
+        cells = (run.name, f"{combined.temperatures[place]:.6g}", f"{run.rows:,}", f"{run.transient_rows:,}")
+        cells += (one_in(combined, place), f"{run.independent_samples:,.0f}")
+        if energies:
+            first, last = _ends(combined, place)
+            cells += (f"{first:.7g}", f"{last:.7g}")
+        cells += (f"{combined.sharing[rank]:,.3g}" if rank < len(combined.sharing) else "",)
+        rows.append(cells)
+    return header, rows
+
+
+def _ends(combined: DensityOfStates, place: int) -> tuple[float, float]:
+    files = combined.runs[place].files
+    if not files:
+        return float("nan"), float("nan")
+    return float(files[0]["first_energy"]), float(files[-1]["last_energy"])
+
+
+def runs_record(combined: DensityOfStates) -> list[dict[str, Any]]:
+    """Runs for machines, in the study's order."""
+    return [
+        {
+            "name": run.name,
+            "temperature": float(combined.temperatures[place]),
+            "beta": run.beta,
+            "rows": run.rows,
+            "transient": run.transient_rows,
+            "samples": run.samples,
+            "statistical_inefficiency": run.decision.inefficiency.value,
+            "statistical_inefficiency_standard_error": run.decision.inefficiency.standard_error,
+            "independent_samples": run.independent_samples,
+            "files": list(run.files),
+        }
+        for place, run in enumerate(combined.runs)
+    ]
+
+
+def print_inputs(combined: DensityOfStates) -> None:
+    """Print the ledger: what became of every row of every file."""
+    header = (
+        "file",
+        "rows",
+        "kept",
+        "transient",
+        "replaced",
+        "dropped",
+        "first energy",
+        "last energy",
+        "sha256",
+    )
+    rows = [
+        (
+            entry["path"],
+            *(f"{entry[part]:,}" for part in ("rows_read", "kept", "transient", "replaced", "dropped")),
+            f"{entry['first_energy']:.7g}",
+            f"{entry['last_energy']:.7g}",
+            entry["sha256"],
+        )
+        for place in combined.cold_to_hot
+        for entry in combined.runs[place].files
+    ]
+    screen.print_table(header, rows)

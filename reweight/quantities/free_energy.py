@@ -1,0 +1,31 @@
+"""Free energy over k_B T, as a difference from a reference temperature."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from reweight.quantities.moments import LOG_PARTITION, Moment, Moments
+from reweight.quantities.quantity import Array, Measure, Quantity
+
+__all__ = ["FreeEnergy"]
+
+
+class FreeEnergy(Quantity):
+    """``beta F = -ln Z``: what runs at several temperatures determine without any convention, up to a constant.
+
+    A difference of F itself would need the absolute number of states, which canonical runs leave open.
+    """
+
+    name = "free_energy"
+    label = "free_energy"
+    long_name = "free energy over k_B T"
+    measure = Measure.NUMBER
+    from_reference = True
+
+    def value(self, moments: Moments) -> Array:
+        """Return ``-ln Z`` up to a constant."""
+        return -moments[LOG_PARTITION]
+
+    def gradient(self, moments: Moments) -> dict[Moment, Array]:
+        """Return minus one."""
+        return {LOG_PARTITION: -np.ones_like(moments.beta)}
