@@ -102,7 +102,7 @@ def _print(combined: DensityOfStates, found: list[Finding], target: Path) -> Non
 
     description = combined.description
     title = description.title or "untitled study"
-    click.echo(f"{title}: {screen.units_text(description)}, {description.energy_kind} energies")
+    click.echo(f"{title}: {screen.units_text(description)}")
     concerns = sorted(
         (each for each in found if each.verdict is not Verdict.SOUND), key=lambda each: -each.verdict
     )
@@ -146,7 +146,7 @@ def _in_short(combined: DensityOfStates, prefix: str) -> str:
     if len(combined.sharing):
         place = int(combined.sharing.argmin())
         cold, hot = (combined.runs[combined.cold_to_hot[place + step]].name for step in (0, 1))
-        text += f"; weakest link {cold} - {hot}, {combined.sharing[place]:,.3g} shared"
+        text += f"; weakest link {cold} - {hot}, {screen.amount(combined.sharing[place])} shared"
     return text
 
 
@@ -176,12 +176,14 @@ def _headline(combined: DensityOfStates) -> list[str]:
     from reweight.answers.curve import common_reach
     from reweight.answers.peak import peaks
     from reweight.errors import OutOfReachError
+    from reweight.notation import within as inside
 
     within = common_reach(combined)
     unit = combined.description.temperature_label
     if within.empty:
         return [f"these runs support no answers yet: {within.limited_by[0]}"]
-    lines = [f"these runs support answers from {within.lowest:.5g} to {within.highest:.5g} {unit}".rstrip()]
+    low, high = inside(within.lowest, within.highest)
+    lines = [f"these runs support answers from {low} to {high} {unit}".rstrip()]
     try:
         best = peaks(combined)[0]
     except OutOfReachError as error:

@@ -59,6 +59,7 @@ def curve(
         screen.print_table(
             ("name", "what"),
             [(each.name, each.long_name) for each in available(combined.description.normalisations).values()],
+            left=(0, 1),
         )
         return
     if at and (points is not None or lowest is not None or highest is not None):

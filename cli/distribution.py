@@ -66,6 +66,8 @@ def distribution(
             "run_temperature",
         ]
         content = {str(name): dataset[name].to_numpy() for name in names}
+        # JSON has no infinity: an infinite temperature is null, but its inverse is 0.
+        content["beta"] = combined.description.inverse_temperature(temperatures)
         screen.print_json(screen.envelope(combined, "distribution", level=level, units=units, **content))
     else:
         _print(dataset)

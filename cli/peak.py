@@ -91,7 +91,7 @@ def _print(combined: DensityOfStates, found: tuple[Peak, ...], level: float) -> 
 
 def describe_peak(combined: DensityOfStates, found: Peak, level: float) -> list[str]:
     """Lines that say where a peak is, how high, and how far it stands out."""
-    from reweight.notation import bracket, quantity_text
+    from reweight.notation import bracket, quantity_text, rounded
 
     unit = combined.description.temperature_label
     name = found.of.replace("_", " ") + (f" per {found.per}" if found.per else "")
@@ -108,12 +108,12 @@ def describe_peak(combined: DensityOfStates, found: Peak, level: float) -> list[
             f"{name}: none stands out; the highest, at {at} with {height}, rises {found.prominence:.1f} standard errors "
             "above the valley beside it",
         ]
-    low, high = found.temperature_interval
-    bottom, top = found.height_interval
+    low, high = (rounded(each, found.temperature_standard_error) for each in found.temperature_interval)
+    bottom, top = (rounded(each, found.height_standard_error) for each in found.height_interval)
     span = f"{100 * level:g} % interval"
     return [
-        f"{name} peaks at {at}, {span} {low:.6g} to {high:.6g}",
-        f"  height {height}, {span} {bottom:.5g} to {top:.5g}",
+        f"{name} peaks at {at}, {span} {low} to {high}",
+        f"  height {height}, {span} {bottom} to {top}",
         f"  correlation of the two errors {found.correlation:+.2f}; stands {found.prominence:.3g} standard errors "
         "above the valley beside it",
     ]

@@ -93,7 +93,7 @@ def runs_table(
         if energies:
             first, last = _ends(combined, place)
             cells += (f"{first:.7g}", f"{last:.7g}")
-        cells += (f"{combined.sharing[rank]:,.3g}" if rank < len(combined.sharing) else "",)
+        cells += (screen.amount(combined.sharing[rank]) if rank < len(combined.sharing) else "",)
         rows.append(cells)
     return header, rows
 

@@ -18,6 +18,7 @@ if TYPE_CHECKING:
     from reweight.density_of_states import DensityOfStates, Description
 
 __all__ = [
+    "amount",
     "counted",
     "echo_temperatures",
     "envelope",
@@ -49,10 +50,24 @@ def counted(number: int, noun: str) -> str:
     return f"{number:,} {noun}{'' if number == 1 else 's'}"
 
 
+def amount(number: float) -> str:
+    """Write a positive amount of independent samples: whole from 100 on, three digits below.
+
+    Examples
+    --------
+    >>> amount(1304.2), amount(14.83)
+    ('1,304', '14.8')
+    """
+    return f"{number:,.0f}" if number >= 100 else f"{number:.3g}"
+
+
 def units_text(description: Description) -> str:
-    """Units of a study in words."""
+    """Kind and units of a study's energies in words."""
     unit = description.temperature_label
-    return f"energies in {description.energy_unit}, temperatures in {unit}" if unit else "reduced units"
+    kind = f"{description.energy_kind} energies"
+    return (
+        f"{kind} in {description.energy_unit}, temperatures in {unit}" if unit else f"{kind}, reduced units"
+    )
 
 
 def echo_temperatures(combined: DensityOfStates, temperatures: Sequence[float], *, quiet: bool) -> None:

@@ -42,10 +42,10 @@ def _print(combined: DensityOfStates, reaches: dict[str, Reach]) -> None:
     description = combined.description
     unit = description.temperature_label
     click.echo(f"{description.title or 'untitled study'}")
-    click.echo(f"  {screen.units_text(description)}, {description.energy_kind} energies")
+    click.echo(f"  {screen.units_text(description)}")
     facts = {
         "count": None if description.count is None else f"{description.count:,} ({description.per})",
-        "length": description.length,
+        "length": None if description.length is None else f"{description.length:g}",
         "dimension": description.dimension,
         "states": description.states,
         "ground degeneracy": description.ground_degeneracy,

@@ -37,8 +37,8 @@ def states(
 ) -> None:
     """Print ln g(E), per level for discrete energies, per bin otherwise.
 
-    Relative by default: zero at the most visited energy, errors those of the difference from it.  Energies with
-    fewer than ten independent visits are marked.
+    Relative by default: zero at a well visited energy, which is named, and errors those of the difference from it.
+    Energies with fewer than ten independent visits are marked.
     """
     from reweight.answers.states import states as ask
 
@@ -69,6 +69,7 @@ def states(
         content |= {
             "energy": dataset["energy"].to_numpy(),
             "absolute": absolute,
+            "reference_energy": dataset.attrs.get("reference_energy"),
             "bins": dataset.attrs["bins"],
         }
         units = {"energy": dataset["energy"].attrs["units"], LABEL: "1"}
@@ -94,11 +95,8 @@ def _print(dataset: xr.Dataset) -> None:
         mark = "" if bool(dataset["well_visited"][place]) else " !"
         rows.append((f"{energy:.8g}", bracket(value, error) + mark, f"{visits:,.1f}"))
     energy_title = "energy" + ("" if unit == "1" else f" [{unit}]")
-    title = (
-        "ln g"
-        if dataset.attrs["bins"] == "levels"
-        else f"ln density of states (bins of {dataset.attrs['bins']})"
-    )
-    screen.print_table(
-        (energy_title, title.replace("bins of width", "bin width"), "independent samples"), rows
-    )
+    bins = dataset.attrs["bins"]
+    title = "ln g" if bins == "levels" else f"ln density of states (bin {bins})"
+    if not dataset.attrs["absolute"]:
+        title += f", 0 at {dataset.attrs['reference_energy']:.8g}"
+    screen.print_table((energy_title, title, "independent samples"), rows)

@@ -4,7 +4,7 @@ A generic model with numbers of our own: beads in free space joined by rigid bon
 
     stiffness (1 - cos(angle between the two bonds))    at every inner bead,
     well_depth (s**2 - 2 s) - its value at the cutoff   between beads three or more bonds apart,
-        s = (well_distance / r)**6, and nothing beyond the cutoff.
+        s = (well_distance / r)**4, and nothing beyond the cutoff.
 
 On cooling the chain collapses from an open coil into a compact globule, which shows as a peak of the heat
 capacity.  Every run starts from a stretched zigzag.
@@ -53,10 +53,10 @@ class BeadChain:
 
     bead_count: int = 20
     bond_length: float = 0.38
-    stiffness: float = 13.5
-    well_depth: float = 2.8
+    stiffness: float = 15.0
+    well_depth: float = 3.2
     well_distance: float = 0.5
-    cutoff: float = 1.1
+    cutoff: float = 0.9
 
     def stretched(self, run_count: int) -> NDArray[np.float64]:
         """Positions of the stretched zigzag, shape (3, B, R): bond angles of 60 degrees from straight."""
@@ -78,9 +78,9 @@ class BeadChain:
 
     def _pair_energy(self, squared_distances: NDArray[np.float64]) -> NDArray[np.float64]:
         ratio = self.well_distance**2 / squared_distances
-        s_cutoff = (self.well_distance / self.cutoff) ** 6
+        s_cutoff = (self.well_distance / self.cutoff) ** 4
         # beyond the well s decreases with r: raising it to its value at the cutoff cuts the potential there
-        s = np.maximum(ratio * ratio * ratio, s_cutoff)
+        s = np.maximum(ratio * ratio, s_cutoff)
         return self.well_depth * (s * (s - 2.0) - s_cutoff * (s_cutoff - 2.0))
 
 

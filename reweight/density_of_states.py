@@ -95,9 +95,10 @@ class Description:
         absolute = given + units.to_kelvin(0.0, self.temperature_unit)
         bad = ~(absolute > 0)
         if bad.any():
+            unit = f" {self.temperature_label}".rstrip()
             raise InputError(
-                f"temperature must be greater than absolute zero; got {np.atleast_1d(given)[np.atleast_1d(bad)][0]:g} "
-                f"{self.temperature_label} ({int(bad.sum())} of {given.size} values)."
+                f"temperature must be greater than absolute zero; got {np.atleast_1d(given)[np.atleast_1d(bad)][0]:g}"
+                f"{unit} ({int(bad.sum())} of {given.size} values)."
             )
         with np.errstate(divide="ignore"):
             return np.asarray(1 / (self.boltzmann_constant * absolute))

@@ -37,22 +37,25 @@ Array = NDArray[np.float64]
 
 @dataclass(frozen=True, slots=True)
 class RunLeaves:
-    """One run's leaves after its transient, weighted.
+    """One run's leaves after its transient.
 
     Attributes
     ----------
     index : numpy.ndarray, shape (q,)
         Places of the run's nodes among all nodes.
     weights : numpy.ndarray, shape (C, B, q)
-        In units of independent samples.
+        In samples: shared with the assembly, since a copy would be as large as everything else together.
+    weighting : float
+        Samples per unit of weight.
     counts : numpy.ndarray, shape (B,)
-        Independent samples in each leaf.
+        Weight of the samples in each leaf.
     total : numpy.ndarray, shape (C, q)
-        Sum over the leaves.
+        Weight on each node, all leaves together.
     """
 
     index: NDArray[np.int64]
     weights: Array
+    weighting: float
     counts: Array
     total: Array
 
@@ -118,10 +121,10 @@ class Estimate:
         shares = weighting / inefficiencies
         runs = []
         for i, run in enumerate(assembly.runs):
-            kept = run.weights[:, first_leaves[i] :] / weighting[i]
+            kept = run.weights[:, first_leaves[i] :]
             counts = run.rows[first_leaves[i] :] / weighting[i]
-            total = kept.sum(axis=1)
-            runs.append(RunLeaves(index=run.index, weights=kept, counts=counts, total=total))
+            total = kept.sum(axis=1) / weighting[i]
+            runs.append(RunLeaves(run.index, kept, float(weighting[i]), counts, total))
             weights[:, run.index] += total
             independent[run.index] += total[0] * shares[i]
             per_run[i, run.index] = total[0]

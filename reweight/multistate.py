@@ -34,7 +34,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.linalg import cho_factor, cho_solve
 from scipy.optimize import brentq
-from scipy.special import expit, logsumexp
+from scipy.special import expit
 
 from reweight.errors import ConvergenceError
 from reweight.products import COLUMNS, product
@@ -114,9 +114,13 @@ def _exponents(counts: Array, beta: Array, energies: Array) -> Array:
 
 
 def _state(exponents: Array, free: Array) -> tuple[Array, Array]:
-    shifted = exponents + free[:, None]
-    log_denominator = np.asarray(logsumexp(shifted, axis=0))
-    return log_denominator, np.exp(shifted - log_denominator)
+    terms = exponents + free[:, None]
+    highest = terms.max(axis=0)
+    terms -= highest
+    np.exp(terms, out=terms)
+    total = terms.sum(axis=0)
+    terms /= total
+    return np.log(total) + highest, terms
 
 
 def hessian(weights: Array, probabilities: Array) -> Array:
@@ -203,6 +207,7 @@ def solve(
         longest = float(np.abs(step).max())
         if longest > LARGEST_STEP:
             step *= LARGEST_STEP / longest
+            squared *= LARGEST_STEP / longest  # slope along the shortened step
         size = 1.0
         while True:
             candidate = free + size * step
@@ -213,7 +218,14 @@ def solve(
             size /= 2
         free, log_denominator, probabilities, value = candidate, new_denominator, new_probabilities, new_value
         if last:
-            return solution_at(free, counts, beta, energies, iterations=iteration + 1, residual=residual)
+            return Solution(
+                free_energies=free,
+                log_denominator=log_denominator,
+                probabilities=probabilities,
+                converged=True,
+                iterations=iteration + 1,
+                residual=residual,
+            )
     raise ConvergenceError(
         f"the free energies did not converge in {MOST_STEPS} steps; the last one moved them by {residual:.2g} standard "
         "errors. The runs may hardly overlap: check their energies and temperatures."

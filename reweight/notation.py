@@ -6,8 +6,9 @@ Two digits of the standard uncertainty, the value to the same place (GUM, JCGM 1
 from __future__ import annotations
 
 import math
+from collections.abc import Callable
 
-__all__ = ["bracket", "quantity_text", "significant"]
+__all__ = ["bracket", "quantity_text", "rounded", "significant", "within"]
 
 
 def bracket(value: float, standard_error: float, digits: int = 2) -> str:
@@ -35,6 +36,38 @@ def bracket(value: float, standard_error: float, digits: int = 2) -> str:
     # Fixed point as long as that is readable: 213(104), not 2(1)e+02.
     fixed = "f" if 1e-4 <= max(abs(value), standard_error) < 1e7 else ""
     return f"{ufloat(value, standard_error):.{digits}u{fixed}S}"
+
+
+def rounded(value: float, standard_error: float) -> str:
+    """Value to the place of the second digit of its standard error.
+
+    Examples
+    --------
+    >>> rounded(324.5312, 5.6), rounded(0.29094, 0.0042), rounded(1453.06, 354.0)
+    ('324.5', '0.2909', '1450')
+    """
+    if not (math.isfinite(value) and math.isfinite(standard_error) and standard_error > 0):
+        return f"{value:.6g}"
+    places = 1 - math.floor(math.log10(standard_error))
+    return f"{round(value, places):.{max(places, 0)}f}"
+
+
+def within(lowest: float, highest: float, digits: int = 4) -> tuple[str, str]:
+    """Ends of a range, rounded inwards so that both lie inside it.
+
+    Examples
+    --------
+    >>> within(238.5501, 521.9401)
+    ('238.6', '521.9')
+    """
+    return _directed(lowest, digits, math.ceil), _directed(highest, digits, math.floor)
+
+
+def _directed(value: float, digits: int, towards: Callable[[float], int]) -> str:
+    if not math.isfinite(value) or value == 0:
+        return f"{value:g}"
+    places = digits - 1 - math.floor(math.log10(abs(value)))
+    return f"{towards(value * 10.0**places) / 10.0**places:.{max(places, 0)}f}"
 
 
 def significant(value: float, digits: int = 4) -> str:

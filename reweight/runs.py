@@ -149,6 +149,8 @@ def as_tree(
     import xarray as xr
 
     if isinstance(runs, xr.DataTree):
+        if temperatures is not None:
+            raise InputError("a tree of runs says its temperatures itself; they must not be given again.")
         if not runs.children:
             raise InputError("a tree of runs must have one child a run; got none.")
         return runs
@@ -172,6 +174,8 @@ def as_tree(
             "runs must be a study file, a DataTree, a DataArray (temperature, sample) or a mapping from run names to "
             f"energies; got {type(runs).__name__}."
         )
+    if not runs:
+        raise InputError("a mapping of runs must have at least one run; got none.")
     given = np.atleast_1d(np.asarray([] if temperatures is None else temperatures, dtype=float))
     if given.size != len(runs):
         raise InputError(

@@ -153,8 +153,8 @@ def open_combined(path: str | os.PathLike[str]) -> DensityOfStates:
             ) from None
         with file:
             file.set_auto_mask(False)
-            _check_header(file, name)
             try:
+                _check_header(file, name)
                 return _read(file, 1000 + MOST_INFLATION * Path(path).stat().st_size)
             except (KeyError, AttributeError, IndexError, TypeError, ValueError, RuntimeError) as error:
                 raise CombinedFileError(

@@ -13,7 +13,7 @@ from reweight.density_of_states import DensityOfStates, Description, LeftOut, Ob
 from reweight.errors import InputError
 from reweight.runs import as_tree, file_sources, tree_sources
 from reweight.study import Study, load_study
-from reweight.study.values import number_of_states
+from reweight.study.values import discarded_start, number_of_states
 from reweight.units import REDUCED
 from reweight.version import VERSION
 
@@ -88,11 +88,13 @@ def combine(
     >>> rw.combine({"cold": rng.gamma(30.0, 1.0, 2000), "hot": rng.gamma(30.0, 1.2, 2000)}, temperatures=[1.0, 1.2])
     <DensityOfStates: 2 runs, ... samples>
     """
-    given = (temperatures, energy_unit, temperature_unit, count, observables)
+    given = (temperatures, energy_unit, temperature_unit, count, states, ground_degeneracy, observables)
+    changed = (per, title, weighting, discard) != ("particle", "", "independent", "auto")
     if isinstance(runs, (str, os.PathLike, Study)):
-        if any(each is not None for each in given):
+        if changed or any(each is not None for each in given):
             raise InputError(
-                "a study file says temperatures, units, count and observables itself; they must not be given again."
+                "a study file says temperatures, units, weighting and all the rest itself; nothing but workers and "
+                "progress may be given beside it. Change the study."
             )
         study = runs if isinstance(runs, Study) else load_study(runs)
         return combine_study(study, workers=workers, progress=progress)
@@ -117,7 +119,7 @@ def combine(
     beta = {name: _beta(description, child) for name, child in tree.children.items()}
     names = tuple(each.name for each in description.observables)
     return combine_sources(
-        tree_sources(tree, beta, names, discard),
+        tree_sources(tree, beta, names, _discarded(discard)),
         description,
         provenance={"version": VERSION},
         workers=workers,
@@ -168,6 +170,13 @@ def combine_study(
         workers=workers,
         progress=progress,
     )
+
+
+def _discarded(discard: int | str) -> int | str:
+    try:
+        return discarded_start(discard)
+    except ValueError as error:
+        raise InputError(f"discard {error}") from None
 
 
 def _number_of_states(text: str) -> str:

@@ -13,6 +13,7 @@ import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 from functools import cached_property
+from itertools import pairwise
 
 import numpy as np
 from numpy.typing import NDArray
@@ -87,7 +88,7 @@ def sample_by_sample(
     heaviest = int(np.argmax(counts))
     free = np.zeros(beta.size)
     order = np.argsort(beta)
-    for a, b in zip(order, order[1:], strict=False):  # d f / d beta is the mean energy
+    for a, b in pairwise(order):  # d f / d beta is the mean energy
         free[b] = free[a] + (beta[b] - beta[a]) * (runs[a].mean() + runs[b].mean()) / 2
     others = np.arange(beta.size) != heaviest
     for _ in range(60):
@@ -112,7 +113,9 @@ def sample_by_sample(
         moved = float(np.abs(new - free).max())
         free = new - new[heaviest]
     if moved > 1e-10 * max(1.0, float(np.abs(free).max())):
-        raise ArithmeticError(f"the naive solution is not self-consistent; the last iteration moved it by {moved}")
+        raise ArithmeticError(
+            f"the naive solution is not self-consistent; the last iteration moved it by {moved}"
+        )
     return SampleBySample(energies=energies, weights=weights, beta=beta, counts=counts, free_energies=free)
 
 
@@ -172,4 +175,6 @@ def level_tally(energies: Array, length: int, values: Array | None = None) -> di
 
 def group_means(series: Array, group: int) -> Array:
     """Means over consecutive complete groups."""
-    return np.array([series[start : start + group].mean() for start in range(0, series.size - group + 1, group)])
+    return np.array(
+        [series[start : start + group].mean() for start in range(0, series.size - group + 1, group)]
+    )

@@ -22,7 +22,8 @@ import reweight as rw
 from reweight import combining
 from reweight.answers.evaluate import evaluate
 from reweight.combining import combine_sources
-from reweight.quantities.catalogue import named
+from reweight.quantities.energy import MeanEnergy
+from reweight.quantities.heat_capacity import HeatCapacity
 from reweight.quantities.moments import Moments
 from reweight.runs import Source
 
@@ -42,6 +43,7 @@ class Case:
     twins: bool = False
 
     def draw(self, seed: int) -> tuple[dict[str, np.ndarray], np.ndarray]:
+        """Energies by run, and temperatures."""
         rng = np.random.default_rng(seed)
         temperatures = (1 + self.spacing / np.sqrt(self.shape)) ** np.arange(self.runs)
         if self.twins:
@@ -83,7 +85,7 @@ def assert_same_as_naive(combined: rw.DensityOfStates, runs: dict[str, np.ndarra
 
     coldest, hottest = estimate.beta.max(), estimate.beta.min()
     beta = np.unique(np.concatenate([np.linspace(hottest * 0.97, coldest * 1.03, 9), estimate.beta]))
-    energy, capacity = evaluate(combined, named(["energy", "heat_capacity"]), beta)
+    energy, capacity = evaluate(combined, [MeanEnergy(), HeatCapacity()], beta)
     expected_capacity = np.array([naive.heat_capacity(b) for b in beta])
     fluctuation = np.sqrt(expected_capacity) / beta
     expected_energy = np.array([naive.mean_energy(b) for b in beta])
@@ -91,7 +93,9 @@ def assert_same_as_naive(combined: rw.DensityOfStates, runs: dict[str, np.ndarra
     # The answer itself is a double near the offset: its last bit is the finest that can be compared.
     last_bit = np.spacing(abs(offset)) / fluctuation
     assert np.all(np.abs(deviation) <= TOLERANCE + last_bit)
-    np.testing.assert_allclose(estimate.canonical(beta).mean_energy, expected_energy, rtol=0, atol=1e-10 * fluctuation.min())
+    np.testing.assert_allclose(
+        estimate.canonical(beta).mean_energy, expected_energy, rtol=0, atol=1e-10 * fluctuation.min()
+    )
     np.testing.assert_allclose(capacity.value, expected_capacity, rtol=TOLERANCE)
     np.testing.assert_allclose(
         energy.effective_sample_size, [naive.effective_sample_size(b) for b in beta], rtol=TOLERANCE
@@ -101,7 +105,9 @@ def assert_same_as_naive(combined: rw.DensityOfStates, runs: dict[str, np.ndarra
 @pytest.mark.parametrize("weighting", ["samples", "independent"])
 @pytest.mark.parametrize("offset", [0.0, 1e6])
 @pytest.mark.parametrize("name", CASES)
-def test_panels_lose_nothing_against_the_sum_over_all_samples(name: str, offset: float, weighting: str) -> None:
+def test_panels_lose_nothing_against_the_sum_over_all_samples(
+    name: str, offset: float, weighting: str
+) -> None:
     runs, temperatures = CASES[name].draw(seed=20240501)
     runs = {run: energies + offset for run, energies in runs.items()}
 
@@ -138,7 +144,10 @@ def test_observables_lose_nothing_either() -> None:
     temperatures = [1.0, 1.25, 1.6]
     energies = {f"{t}": rng.gamma(25.0, t, 900) for t in temperatures}
     runs = {
-        name: {"energy": e, "order": np.sign(rng.standard_normal(e.size)) * np.sqrt(e) + rng.standard_normal(e.size)}
+        name: {
+            "energy": e,
+            "order": np.sign(rng.standard_normal(e.size)) * np.sqrt(e) + rng.standard_normal(e.size),
+        }
         for name, e in energies.items()
     }
 
@@ -161,7 +170,10 @@ def test_observables_lose_nothing_either() -> None:
         wanted = values[column.power, column.absolute]
         scale = np.abs(wanted).max()
         np.testing.assert_allclose(
-            estimate.column(column) @ weights, [naive.mean(wanted, b) for b in beta], rtol=0, atol=TOLERANCE * scale
+            estimate.column(column) @ weights,
+            [naive.mean(wanted, b) for b in beta],
+            rtol=0,
+            atol=TOLERANCE * scale,
         )
 
 
@@ -182,8 +194,8 @@ def test_narrower_panels_change_nothing() -> None:
 
     assert narrow.estimate.assembly.width == wide.estimate.assembly.width / 2
     for a, b in zip(
-        evaluate(wide, named(["energy", "heat_capacity"]), beta),
-        evaluate(narrow, named(["energy", "heat_capacity"]), beta),
+        evaluate(wide, [MeanEnergy(), HeatCapacity()], beta),
+        evaluate(narrow, [MeanEnergy(), HeatCapacity()], beta),
         strict=True,
     ):
         np.testing.assert_allclose(a.value, b.value, rtol=TOLERANCE)

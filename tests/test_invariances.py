@@ -24,7 +24,9 @@ def draw(seed: int = 4) -> dict[str, np.ndarray]:
     return {name: rng.gamma(25.0, t, 1500) for name, t in TEMPERATURES.items()}
 
 
-def combine(runs: dict[str, np.ndarray], temperatures: dict[str, float] = TEMPERATURES, **keys: object) -> rw.DensityOfStates:
+def combine(
+    runs: dict[str, np.ndarray], temperatures: dict[str, float] = TEMPERATURES, **keys: object
+) -> rw.DensityOfStates:
     return rw.combine(runs, temperatures=[temperatures[name] for name in runs], discard=0, **keys)
 
 
@@ -51,7 +53,8 @@ def test_the_names_of_the_runs_do_not_matter() -> None:
 
     other = rw.combine(renamed, temperatures=list(TEMPERATURES.values()), discard=0)
 
-    xr.testing.assert_identical(rw.curve(combine(runs), ASKED), rw.curve(other, ASKED))
+    one = rw.curve(combine(runs), ASKED)
+    xr.testing.assert_identical(one.drop_vars("run"), rw.curve(other, ASKED).drop_vars("run"))
 
 
 @pytest.mark.parametrize("constant", [1.0, -37.123, 12345.678])
@@ -64,7 +67,9 @@ def test_adding_a_constant_to_all_energies_shifts_the_mean_energy_by_it(constant
     assert_same(one, other)
 
 
-@pytest.mark.parametrize(("energy_unit", "temperature_scale"), [("kJ/mol", 300.0), ("eV", 300.0), ("kcal/mol", 70.0)])
+@pytest.mark.parametrize(
+    ("energy_unit", "temperature_scale"), [("kJ/mol", 300.0), ("eV", 300.0), ("kcal/mol", 70.0)]
+)
 def test_the_unit_of_the_energies_does_not_matter(energy_unit: str, temperature_scale: float) -> None:
     """The same physics in kelvin: energies times ``k_B T_scale`` in the unit, temperatures times ``T_scale``."""
     runs = draw()
@@ -102,7 +107,9 @@ def test_answers_can_be_asked_in_another_unit_than_the_energies_have() -> None:
     calorie = rw.curve(combined, 300 * ASKED, energy_unit="kcal/mol")
 
     for name in ("mean_energy", "mean_energy_standard_error", "mean_energy_interval", "heat_capacity"):
-        np.testing.assert_allclose(calorie[name] * 4.184, joule[name], rtol=1e-12)  # thermochemical calorie, exact
+        np.testing.assert_allclose(
+            calorie[name] * 4.184, joule[name], rtol=1e-12
+        )  # thermochemical calorie, exact
     assert calorie["mean_energy"].attrs["units"] == "kcal mol-1"
 
 
@@ -111,7 +118,9 @@ def test_celsius_and_kelvin_give_the_same_answers() -> None:
     runs = {name: energies * k * 300 for name, energies in draw().items()}
     kelvin = np.array([300 * t for t in TEMPERATURES.values()])
     one = rw.combine(runs, temperatures=kelvin, energy_unit="eV", temperature_unit="K", discard=0)
-    other = rw.combine(runs, temperatures=kelvin - 273.15, energy_unit="eV", temperature_unit="degC", discard=0)
+    other = rw.combine(
+        runs, temperatures=kelvin - 273.15, energy_unit="eV", temperature_unit="degC", discard=0
+    )
 
     assert_same(rw.curve(one, 300 * ASKED), rw.curve(other, 300 * ASKED - 273.15))
 
@@ -125,7 +134,9 @@ def test_dividing_a_run_in_two_changes_no_answer_when_samples_are_weighted_alike
     other = combine(divided, temperatures, weighting="samples")
 
     assert_same(rw.curve(one, ASKED), rw.curve(other, ASKED), errors=False)
-    halves = [other.runs.index(run) for run in other.runs if run.name.startswith("hot") and run.name != "hottest"]
+    halves = [
+        other.runs.index(run) for run in other.runs if run.name.startswith("hot") and run.name != "hottest"
+    ]
     free = other.estimate.solution.free_energies[halves]
     assert abs(free[0] - free[1]) < SAME
 
@@ -146,13 +157,17 @@ def test_two_runs_at_one_temperature_are_as_good_as_one_of_their_samples() -> No
     assert float(other["mean_energy"][1]) == pytest.approx(pooled.mean(), rel=SAME)
     assert float(other["heat_capacity"][1]) == pytest.approx(pooled.var() / 1.3**2, rel=SAME)
     # Other leaves: another estimate of the same error, known to about 1 / sqrt(2 * 64) = 9 % from each.
-    np.testing.assert_allclose(other["mean_energy_standard_error"], one["mean_energy_standard_error"], rtol=0.5)
+    np.testing.assert_allclose(
+        other["mean_energy_standard_error"], one["mean_energy_standard_error"], rtol=0.5
+    )
 
 
 def test_a_peak_lies_at_the_same_place_in_every_unit() -> None:
     rng = np.random.default_rng(21)
     temperatures = np.array([0.3, 0.4, 0.5])
-    gap_energies = {f"{t}": rng.binomial(20, 1 / (1 + np.exp(1 / t)), 3000).astype(float) for t in temperatures}
+    gap_energies = {
+        f"{t}": rng.binomial(20, 1 / (1 + np.exp(1 / t)), 3000).astype(float) for t in temperatures
+    }
     k = boltzmann_constant("eV", "K")
 
     reduced = rw.peaks(rw.combine(gap_energies, temperatures=temperatures, discard=0))[0]
@@ -167,7 +182,9 @@ def test_a_peak_lies_at_the_same_place_in_every_unit() -> None:
     )[0]
 
     assert not reduced.at_edge
-    assert in_unit.temperature == pytest.approx(reduced.temperature * 0.02 / k, rel=1e-7)  # flat top: half the digits
+    assert in_unit.temperature == pytest.approx(
+        reduced.temperature * 0.02 / k, rel=1e-7
+    )  # flat top: half the digits
     assert in_unit.height == pytest.approx(reduced.height * k, rel=SAME)
     assert in_unit.temperature_standard_error == pytest.approx(
         reduced.temperature_standard_error * 0.02 / k, rel=1e-5

@@ -95,7 +95,9 @@ def assert_answers_same_bits(one: rw.DensityOfStates, other: rw.DensityOfStates)
         assert_same_bits(run.tally, twin.tally)
         assert dataclasses.astuple(run.decision) == dataclasses.astuple(twin.decision)
     for name in ("free_energies", "log_denominator", "probabilities"):
-        assert getattr(one.estimate.solution, name).tobytes() == getattr(other.estimate.solution, name).tobytes()
+        assert (
+            getattr(one.estimate.solution, name).tobytes() == getattr(other.estimate.solution, name).tobytes()
+        )
     asked = {"temperature": np.linspace(0.98, 1.17, 7), "beyond_reach": True}
     xr.testing.assert_identical(rw.curve(one, **asked), rw.curve(other, **asked))
     limits = {"lowest": 0.98, "highest": 1.17, "beyond_reach": True}

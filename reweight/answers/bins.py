@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 
 from reweight.density_of_states import DensityOfStates
 from reweight.errors import InputError
+from reweight.tally.assemble import Assembly
 from reweight.tally.leaves import COUNT
 from reweight.uncertainty.influence import Influence, block_sums, with_free_energies
 
@@ -72,11 +73,11 @@ def energy_bins(combined: DensityOfStates, width: float | None = None) -> Bins:
     Raises
     ------
     InputError
-        The width is not positive, or narrower than the panels.
+        The width is not positive, narrower than the panels or the distance between levels, or wider than all energies.
     """
     assembly = combined.estimate.assembly
-    if width is not None and not (np.isfinite(width) and width > 0):
-        raise InputError(f"a bin width must be positive; got {width:g}.")
+    if width is not None:
+        _check_width(assembly, width)
     if assembly.discrete and width is None:
         return Bins(
             of_node=np.arange(assembly.keys.size), energy=np.asarray(assembly.keys, float), width=None
@@ -86,11 +87,6 @@ def energy_bins(combined: DensityOfStates, width: float | None = None) -> Bins:
         number = np.floor(assembly.keys / width).astype(np.int64)
     else:
         panels = PANELS_A_BIN if width is None else round(width / assembly.width)
-        if panels < 1:
-            raise InputError(
-                f"a bin width must be at least {assembly.width:g}, the finest that was kept; got {width:g}. "
-                "Set resolution in the study to keep finer bins."
-            )
         number = np.asarray(assembly.keys, np.int64) // panels
         width = panels * assembly.width
     present, place = np.unique(number, return_inverse=True)
@@ -99,6 +95,26 @@ def energy_bins(combined: DensityOfStates, width: float | None = None) -> Bins:
         energy=np.asarray((present + 0.5) * width, float),
         width=width,
     )
+
+
+def _check_width(assembly: Assembly, width: float) -> None:
+    if not (np.isfinite(width) and width > 0):
+        raise InputError(f"a bin width must be positive and finite; got {width:g}.")
+    lowest, highest = float(assembly.keys[0]), float(assembly.keys[-1])
+    if assembly.discrete:
+        finest = float(np.diff(assembly.keys).min(initial=np.inf))
+        whole, what = highest - lowest, "distance between levels"
+        advice = "Leave the bin width out to have each level by itself."
+    else:
+        finest, whole = assembly.width, (highest - lowest + 1) * assembly.width
+        what, advice = "finest that was kept", "Set resolution in the study to keep finer bins."
+    if width < finest:
+        raise InputError(f"a bin width must be at least {finest:g}, the {what}; got {width:g}. {advice}")
+    if width > whole:
+        raise InputError(
+            f"a bin width must be at most {whole:g}, the range of the sampled energies; got {width:g}. "
+            "Is it in the study's energy unit?"
+        )
 
 
 def bin_blocks(

@@ -11,12 +11,12 @@ from numpy.typing import ArrayLike, NDArray
 
 from reweight.answers.evaluate import Evaluation, evaluate
 from reweight.answers.presentation import presentation
-from reweight.answers.reach import Reach, reach
+from reweight.answers.reach import Reach, judge, reach
 from reweight.density_of_states import DensityOfStates
 from reweight.errors import InputError, OutOfReachError
 from reweight.labels import error_attributes, temperature_attributes, value_attributes
 from reweight.notation import significant
-from reweight.quantities.quantity import Measure
+from reweight.quantities.quantity import Measure, Quantity
 from reweight.uncertainty.intervals import check_level, half_width
 
 __all__ = ["DEFAULT_QUANTITIES", "answer", "common_reach", "curve", "temperature_grid"]
@@ -54,7 +54,8 @@ def curve(
     of : str or sequence of str
         Names of quantities.
     reference : float, optional
-        Temperature from which entropies and free energies are counted; by default that of the coldest run.
+        Temperature from which entropies and free energies are counted; by default that of the coldest run within
+        reach.
     level : float
         Of the confidence intervals.
     per_count : bool
@@ -80,7 +81,7 @@ def curve(
     NotInFileError
         A quantity cannot be answered from what was recorded.
     OutOfReachError
-        None of the temperatures is within reach.
+        None of the temperatures is within reach, or the reference is not.
 
     Examples
     --------
@@ -102,7 +103,7 @@ def curve(
         given = np.atleast_1d(np.asarray(temperature, dtype=float))
     beta = combined.description.inverse_temperature(given)
     expressed = [presentation(combined, q, per_count=per_count, energy_unit=energy_unit) for q in quantities]
-    origin = None if reference is None else float(combined.description.inverse_temperature(reference))
+    origin = _origin(combined, quantities, reference, beyond_reach=beyond_reach)
     evaluations = evaluate(combined, quantities, beta, reference=origin)
     dataset = xr.Dataset(
         coords={
@@ -123,7 +124,7 @@ def curve(
         )
         long_name = quantity.long_name
         if quantity.from_reference:
-            long_name += f", counted from {significant(_reference(combined, reference))}"
+            long_name += f", counted from {significant(float(combined.description.temperature(origin)))}"
         attributes = value_attributes(
             quantity.label,
             long_name,
@@ -205,8 +206,25 @@ def answer(
     return shown
 
 
-def _reference(combined: DensityOfStates, reference: float | None) -> float:
-    return float(combined.temperatures.min()) if reference is None else reference
+def _origin(
+    combined: DensityOfStates, quantities: Sequence[Quantity], reference: float | None, *, beyond_reach: bool
+) -> float:
+    """Inverse temperature from which entropies and free energies are counted.
+
+    By default that of the coldest run at which they are supported: a difference is only supported if both ends are.
+    """
+    counted = [quantity for quantity in quantities if quantity.from_reference]
+    beta = combined.estimate.beta[combined.cold_to_hot]
+    if reference is not None:
+        beta = np.atleast_1d(combined.description.inverse_temperature(reference))
+    inside = np.full(beta.shape, True)
+    for quantity in counted:
+        inside &= judge(combined, quantity, beta)[0]
+    if reference is not None and not inside.any() and not beyond_reach:
+        raise _out_of_reach(
+            combined, np.array([reference]), [q.name for q in counted], None, what="the reference"
+        )
+    return float(beta[np.argmax(inside)])
 
 
 def _numbers(evaluation: Evaluation, level: float) -> tuple[Array, Array, Array]:
@@ -265,7 +283,12 @@ def temperature_grid(
 
 
 def _out_of_reach(
-    combined: DensityOfStates, outside: Array, of: Sequence[str], estimate: object, asked: int | None = None
+    combined: DensityOfStates,
+    outside: Array,
+    of: Sequence[str],
+    estimate: object,
+    asked: int | None = None,
+    what: str = "temperature",
 ) -> OutOfReachError:
     within = common_reach(combined, of)
     unit = f" {combined.description.temperature_label}".rstrip()
@@ -279,7 +302,7 @@ def _out_of_reach(
         )
     total = outside.size if asked is None else asked
     return OutOfReachError(
-        f"temperature must lie in [{significant(within.lowest)}, {significant(within.highest)}]{unit}, the reach of these "
+        f"{what} must lie in [{significant(within.lowest)}, {significant(within.highest)}]{unit}, the reach of these "
         f"runs for {names}; got {significant(float(outside[0]))}{unit} ({outside.size} of {total} values are outside). "
         f"At the cold end {within.limited_by[0]}; at the hot end {within.limited_by[1]}. Add a run there, or ask beyond "
         "the reach to see an unsupported estimate.",

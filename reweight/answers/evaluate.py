@@ -133,8 +133,10 @@ def _evaluation(quantity: Quantity, beta: Array, pieces: list[Piece], needs_refe
     within = supported(quantity, ends, carrying)
     if needs_reference:
         if quantity.from_reference:
-            value = value - value[-1]
-            blocks = [block - block[:, -1:] for block in blocks]
+            # Exactly zero at the reference itself: products of matrices leave a last bit that depends on the column.
+            elsewhere = beta != beta[-1]
+            value = (value - value[-1]) * elsewhere
+            blocks = [(block - block[:, -1:]) * elsewhere for block in blocks]
             # A difference is supported where both of its ends are.
             ends = np.maximum(ends, ends[:, -1:])
             carrying = np.minimum(carrying, carrying[-1])

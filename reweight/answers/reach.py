@@ -24,7 +24,7 @@ from reweight.quantities.quantity import Quantity
 from reweight.tally.leaves import COUNT
 from reweight.uncertainty.influence import Influence, influence
 
-__all__ = ["Reach", "carriers", "end_mass", "reach", "supported"]
+__all__ = ["Reach", "carriers", "end_mass", "judge", "reach", "supported"]
 
 Array = NDArray[np.float64]
 
@@ -80,14 +80,16 @@ def end_mass(canonical: Canonical) -> Array:
 def carriers(canonical: Canonical, influences: Influence) -> Array:
     """Independent samples that carry the variance of an answer, shape (T,).
 
-    ``(sum W I**2)**2 / sum W I**4`` with I the influence minus its mean in each run.  For an observable, whose own
-    fourth moment is not tallied, the influence is replaced by the canonical weight.
+    ``(sum W I**2)**2 / sum W I**4`` with I the influence minus its mean in each run.  The canonical weight stands for
+    the influence where that will not do: for an observable, whose own fourth moment is not tallied, and where no
+    sample moves the answer (the heat capacity at infinite temperature is 0 whatever was sampled).
     """
     estimate = canonical.estimate
+    second = estimate.independent @ canonical.weights**2
+    fourth = estimate.independent @ canonical.weights**4
+    by_weight = np.divide(second**2, fourth, out=np.zeros_like(second), where=fourth > 0)
     if set(influences.columns) != {COUNT}:
-        second = estimate.independent @ canonical.weights**2
-        fourth = estimate.independent @ canonical.weights**4
-        return np.divide(second**2, fourth, out=np.zeros_like(second), where=fourth > 0)
+        return by_weight
     second = np.zeros_like(canonical.beta)
     fourth = np.zeros_like(canonical.beta)
     phi = influences.columns[COUNT]
@@ -97,7 +99,7 @@ def carriers(canonical: Canonical, influences: Influence) -> Array:
         squared = (here - weights @ here / weights.sum()) ** 2
         second += independent * (weights @ squared)
         fourth += independent * (weights @ squared**2)
-    return np.divide(second**2, fourth, out=np.zeros_like(second), where=fourth > 0)
+    return np.divide(second**2, fourth, out=by_weight, where=fourth > 0)
 
 
 def supported(quantity: Quantity, ends: Array, carrying: Array) -> NDArray[np.bool_]:
@@ -106,6 +108,17 @@ def supported(quantity: Quantity, ends: Array, carrying: Array) -> NDArray[np.bo
         (ends.max(axis=0) <= MOST_END_MASS[quantity.fluctuation])
         & (carrying >= FEWEST_CARRIERS[quantity.fluctuation])
     )
+
+
+def judge(
+    combined: DensityOfStates, quantity: Quantity, beta: Array
+) -> tuple[NDArray[np.bool_], Array, Array]:
+    """Whether an answer is within reach, its end masses (2, T) and its carriers (T,), at inverse temperatures (T,)."""
+    canonical = combined.estimate.canonical(beta)
+    ends = end_mass(canonical)
+    moments = Moments(canonical, combined.description.boltzmann_constant)
+    carrying = carriers(canonical, influence(quantity, moments))
+    return supported(quantity, ends, carrying), ends, carrying
 
 
 def reach(combined: DensityOfStates, of: str = "heat_capacity") -> Reach:
@@ -127,15 +140,6 @@ def reach(combined: DensityOfStates, of: str = "heat_capacity") -> Reach:
     """
     (quantity,) = combined.quantities([of])
     estimate = combined.estimate
-
-    def judge(beta: Array) -> tuple[NDArray[np.bool_], Array, Array]:
-        canonical = estimate.canonical(beta)
-        ends = end_mass(canonical)
-        carrying = carriers(
-            canonical, influence(quantity, Moments(canonical, combined.description.boltzmann_constant))
-        )
-        return supported(quantity, ends, carrying), ends, carrying
-
     cold, hot = float(estimate.beta.max()), float(estimate.beta.min())
     grid = np.unique(
         np.concatenate(
@@ -150,23 +154,27 @@ def reach(combined: DensityOfStates, of: str = "heat_capacity") -> Reach:
     grid = grid[grid >= min(0.0, hot)]
     if hot > 0:
         grid = np.concatenate([[0.0], grid]) if grid[0] > 0 else grid
-    inside = judge(grid)[0]
+    inside = judge(combined, quantity, grid)[0]
     if not inside.any():
         return Reach(lowest=np.nan, highest=np.nan, limited_by=("too few samples", "too few samples"))
     edges = np.flatnonzero(np.diff(np.concatenate([[False], inside, [False]]).astype(int)))
     first, stop = max(edges.reshape(-1, 2), key=lambda pair: grid[pair[1] - 1] - grid[pair[0]])
     low_beta, high_beta = float(grid[first]), float(grid[stop - 1])
+
+    def within(beta: float) -> bool:
+        return bool(judge(combined, quantity, np.array([beta]))[0][0])
+
     if first > 0:
-        low_beta = _boundary(lambda b: bool(judge(np.array([b]))[0][0]), low_beta, float(grid[first - 1]))
+        low_beta = _boundary(within, low_beta, float(grid[first - 1]))
     if stop < grid.size:
-        high_beta = _boundary(lambda b: bool(judge(np.array([b]))[0][0]), high_beta, float(grid[stop]))
+        high_beta = _boundary(within, high_beta, float(grid[stop]))
     beyond = np.array(
         [
             float(grid[stop]) if stop < grid.size else high_beta,
             float(grid[first - 1]) if first > 0 else low_beta,
         ]
     )
-    _, ends, carrying = judge(beyond)
+    _, ends, carrying = judge(combined, quantity, beyond)
     limits = tuple(_limit(quantity, ends[:, i], carrying[i], side) for i, side in enumerate(("low", "high")))
     lowest, highest = combined.description.temperature(np.array([high_beta, low_beta]))
     return Reach(lowest=float(lowest), highest=float(highest), limited_by=(limits[0], limits[1]))
@@ -194,5 +202,5 @@ def _limit(quantity: Quantity, ends: Array, carrying: float, side: str) -> str:
         which = "lower" if ends[0] >= ends[1] else "higher"
         return f"energies {which} than the sampled ones are needed"
     if carrying < FEWEST_CARRIERS[quantity.fluctuation]:
-        return f"only {carrying:.0f} independent samples carry the answer"
-    return f"nothing sampled beyond the {'coldest' if side == 'low' else 'hottest'} run"
+        return f"only {int(carrying)} independent samples carry the answer"
+    return "nothing limits it" if side == "high" else "nothing limits it as far as searched"

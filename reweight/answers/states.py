@@ -54,7 +54,8 @@ def states(
     xarray.Dataset
         On ``energy``: ``log_density_of_states`` (of levels: ln g; of bins: ln of the number of states per energy
         unit), its ``_standard_error`` and ``_interval``, and ``independent_samples``, the visits behind each.  Unless
-        absolute, the value is 0 at the most visited energy, and errors are those of differences from it.
+        absolute, the value is 0 at a well visited energy (attribute ``reference_energy``), and errors are those of
+        differences from it.
 
     Raises
     ------
@@ -81,17 +82,33 @@ def states(
 
     blocks = bin_blocks(combined, bins, direct)
     if absolute:
-        shift, reference = _anchor(combined, bins, value, blocks, visits)
+        reference = None
+        shift, common = _anchor(combined, bins, value, blocks, visits)
     else:
-        most = int(np.argmax(visits))
-        shift, reference = -value[most], [block[:, most : most + 1] for block in blocks]
-    blocks = [block - part for block, part in zip(blocks, reference, strict=True)]
+        reference = _reference(bins, visits)
+        shift, common = -value[reference], [block[:, reference : reference + 1] for block in blocks]
+    blocks = [block - part for block, part in zip(blocks, common, strict=True)]
     spread = variance(blocks)
     half = half_width(spread.standard_error, spread.degrees_of_freedom, level)
     value = np.where(seen, value + shift, np.nan)
     return _labelled(
-        combined, bins, value, np.where(seen, spread.standard_error, np.nan), half, visits, absolute, level
+        combined, bins, value, np.where(seen, spread.standard_error, np.nan), half, visits, reference, level
     )
+
+
+def _reference(bins: Bins, visits: Array) -> int:
+    """Bin in the middle of the shortest stretch of energies that holds a quarter of the independent samples.
+
+    Not simply the most visited one: where many are visited about equally, the largest number of visits is so by
+    chance, every difference from it comes out too low, and intervals of nominal 95 % hold the truth 81 % of the time.
+    """
+    before = np.concatenate([[0.0], np.cumsum(visits)])
+    quarter = before[-1] / 4
+    last = np.searchsorted(before, before[:-1] + quarter) - 1
+    fits = last < bins.count
+    length = np.where(fits, bins.energy[np.where(fits, last, 0)] - bins.energy, np.inf)
+    first = int(np.argmin(length))
+    return int(np.searchsorted(before, before[first] + quarter / 2)) - 1
 
 
 def _anchor(
@@ -147,7 +164,7 @@ def _labelled(
     error: Array,
     half: Array,
     visits: Array,
-    absolute: bool,
+    reference: int | None,
     level: float,
 ) -> xr.Dataset:
     unit = energy_unit_label(combined.description.energy_unit)
@@ -156,7 +173,8 @@ def _labelled(
         if bins.width is None
         else f"number of states per {unit if unit != '1' else 'unit'}"
     )
-    kind = "" if absolute else ", relative to the most visited energy"
+    zero = {} if reference is None else {"reference_energy": float(bins.energy[reference])}
+    kind = "" if reference is None else f", counted from that at {bins.energy[reference]:.8g}"
     attributes = value_attributes(
         LABEL, f"natural logarithm of the {what}{kind}", "1", per=None, per_kelvin_unit=False
     )
@@ -192,7 +210,8 @@ def _labelled(
             "title": combined.description.title,
             "level": level,
             "errors": "linear response",
-            "absolute": int(absolute),
+            "absolute": int(reference is None),
+            **zero,
             "bins": "levels" if bins.width is None else f"width {bins.width:g}",
         },
     )

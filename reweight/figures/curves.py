@@ -9,8 +9,7 @@ import numpy as np
 
 from reweight.answers.peak import Peak
 from reweight.density_of_states import DensityOfStates
-from reweight.figures.style import BAND, LINE, MARK, SINGLE_COLUMN, styled
-from reweight.notation import quantity_text
+from reweight.figures.style import BAND, LINE, MARK, SINGLE_COLUMN, axis_text, styled
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -36,8 +35,8 @@ def draw_curve(axes: Axes, dataset: xr.Dataset, label: str) -> Axes:
     else:
         axes.fill_between(temperature, interval[:, 0], interval[:, 1], color=BAND, linewidth=0)
         axes.plot(temperature, value, color=LINE)
-    axes.set_ylabel(_axis_text(dataset[label].attrs["long_name"], dataset[label].attrs["units"]))
-    axes.set_xlabel(_axis_text("temperature", dataset["temperature"].attrs["units"]))
+    axes.set_ylabel(axis_text(dataset[label].attrs["long_name"], dataset[label].attrs["units"]))
+    axes.set_xlabel(axis_text("temperature", dataset["temperature"].attrs["units"]))
     return axes
 
 
@@ -90,9 +89,5 @@ def curve_figure(combined: DensityOfStates, dataset: xr.Dataset, marked: Sequenc
             draw_peak(panels[-1], peak)
         shape = "bars" if dataset.sizes["temperature"] < FEW else "band"
         text = f"{shape}: {100 * dataset.attrs['level']:g} % interval; triangles: simulated temperatures"
-        panels[0].set_title(text, fontsize=7, loc="left")
+        figure.suptitle(text, fontsize=7)
     return figure
-
-
-def _axis_text(name: str, unit: str) -> str:
-    return name if unit in ("", "1") else f"{name} ({quantity_text('', unit).strip()})"

@@ -6,7 +6,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from reweight.figures.style import BAND, LINE, SINGLE_COLUMN, styled
+from reweight.figures.style import BAND, LINE, SINGLE_COLUMN, axis_text, styled
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -46,9 +46,9 @@ def draw_distribution(axes: Axes, dataset: xr.Dataset) -> Axes:
             energy, value, color=colour, linestyle=DASHES[place % len(DASHES)], label=f"T = {temperature:g}"
         )
     axes.set_ylim(bottom=0)
-    axes.set_xlabel(_with_unit("energy", dataset["energy"].attrs["units"]))
+    axes.set_xlabel(axis_text("energy", dataset["energy"].attrs["units"]))
     axes.set_ylabel(
-        _with_unit(dataset["probability"].attrs["long_name"], dataset["probability"].attrs["units"])
+        axis_text(dataset["probability"].attrs["long_name"], dataset["probability"].attrs["units"])
     )
     axes.legend(frameon=False)
     return axes
@@ -63,10 +63,10 @@ def draw_states(axes: Axes, dataset: xr.Dataset) -> Axes:
     marker = "." if dataset.attrs["bins"] == "levels" and energy.size < 200 else ""
     value = dataset["log_density_of_states"].to_numpy()[seen]
     axes.plot(energy, value, color=LINE, marker=marker, markersize=2, linewidth=0.8)
-    axes.set_xlabel(_with_unit("energy", dataset["energy"].attrs["units"]))
+    axes.set_xlabel(axis_text("energy", dataset["energy"].attrs["units"]))
     levels = dataset.attrs["bins"] == "levels"
     axes.set_ylabel("ln g(E)" if levels else "ln density of states")
-    text = "absolute" if dataset.attrs["absolute"] else "zero at the most visited energy"
+    text = "absolute" if dataset.attrs["absolute"] else f"zero at {dataset.attrs['reference_energy']:.6g}"
     axes.set_title(f"band: {100 * dataset.attrs['level']:g} % interval; {text}", fontsize=7, loc="left")
     return axes
 
@@ -89,7 +89,3 @@ def states_figure(dataset: xr.Dataset) -> Figure:
         figure = Figure(figsize=(SINGLE_COLUMN, 2.5))
         draw_states(figure.subplots(), dataset)
     return figure
-
-
-def _with_unit(name: str, unit: str) -> str:
-    return name if unit == "1" else f"{name} ({unit})"

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import os
+import textwrap
 from collections.abc import Iterable, Iterator
 from contextlib import contextmanager
 from typing import TYPE_CHECKING, Any
@@ -13,8 +14,10 @@ from reweight.files import replacing
 if TYPE_CHECKING:
     from matplotlib.figure import Figure
 
-__all__ = ["BAND", "LINE", "MARK", "save_figure", "styled"]
+__all__ = ["BAND", "LINE", "MARK", "SINGLE_COLUMN", "axis_text", "save_figure", "styled"]
 
+SUPERSCRIPTS = str.maketrans("-0123456789", "⁻⁰¹²³⁴⁵⁶⁷⁸⁹")
+WIDEST_LABEL = 26  # characters that fit along the height of a panel
 SINGLE_COLUMN = 3.375  # inches, one column of a two-column journal
 
 LINE = "#1b3a57"
@@ -48,6 +51,20 @@ def styled() -> Iterator[None]:
 
     with mpl.rc_context(SETTINGS):
         yield
+
+
+def axis_text(name: str, unit: str) -> str:
+    r"""Label of an axis, in lines short enough for the height of a panel; the unit in brackets.
+
+    Examples
+    --------
+    >>> axis_text("temperature", "K"), axis_text("free energy over k_B T, counted from 235", "1")
+    ('temperature (K)', 'free energy over k_B T,\ncounted from 235')
+    """
+    # Blanks that do not break keep a unit on one line.
+    shown = unit.translate(SUPERSCRIPTS).replace(" ", "\N{NO-BREAK SPACE}")
+    text = name if unit in ("", "1") else f"{name} ({shown})"
+    return "\n".join(textwrap.wrap(text, WIDEST_LABEL))
 
 
 def save_figure(

@@ -36,7 +36,7 @@ def text(word: str) -> str:
     known = list(words())
     wanted = word.strip().lower().replace(" ", "-").replace("_", "-")
     if wanted not in known:
-        near = difflib.get_close_matches(wanted, known, n=3, cutoff=0.5)
+        near = difflib.get_close_matches(wanted, known, n=3, cutoff=0.6)
         hint = (
             f"Did you mean {' or '.join(near)}?" if near else "Without a word, reweight explain lists them."
         )

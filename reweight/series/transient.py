@@ -39,7 +39,10 @@ def transient_length(series: NDArray[np.float64]) -> int:
     half = series[count // 2 :]
     low, median, high = np.percentile(half, [25, 50, 75])
     reach = OUTLIER_RANGE * (high - low)
+    wild = 0
     if reach > 0:  # one wild first sample would otherwise hide the correlation of all the others
+        outside = np.abs(series - median) > reach
+        wild = int(np.argmin(outside))  # those at the very start are part of the transient, however few
         series = np.clip(series, median - reach, median + reach)
     largest = count - FEWEST_LEFT
     starts = np.unique(np.concatenate([[0], np.geomspace(1, largest, CANDIDATES).astype(int)]))
@@ -49,4 +52,4 @@ def transient_length(series: NDArray[np.float64]) -> int:
         inefficiency = statistical_inefficiency(rest)
         independent.append(1.0 if inefficiency.constant else rest.size / inefficiency.value)
     best = int(starts[int(np.argmax(independent))])
-    return min(2 * best, 3 * count // 4)
+    return min(max(wild, 2 * best), 3 * count // 4)

@@ -115,7 +115,7 @@ def _normalisation(value: object) -> object:
     return "per site" if isinstance(value, str) and re.fullmatch(r"per \S.*", value) else value
 
 
-def _discard(value: object) -> str | int:
+def discarded_start(value: object) -> str | int:
     """Check the beginning of a run that is left out: ``"auto"``, a number of rows or a percentage."""
     if isinstance(value, int) and not isinstance(value, bool) and value >= 0:
         return value
@@ -201,6 +201,6 @@ CommentPrefixes = Annotated[_TextList, AfterValidator(_comment_prefixes)]
 FileNames = Annotated[_TextList, AfterValidator(_file_names)]
 NumberOfStates = Annotated[str, AfterValidator(number_of_states)]
 Moments = Annotated[tuple[int, ...], PlainValidator(_moments)]
-Discard = Annotated[str | int, PlainValidator(_discard)]
+Discard = Annotated[str | int, PlainValidator(discarded_start)]
 Encoding = Annotated[str, AfterValidator(_encoding)]
 Delimiter = Annotated[str, AfterValidator(_delimiter)]

@@ -202,53 +202,58 @@ def leaf_sums(
     weights = [None] + [np.ascontiguousarray(column_values(rows, c, observables)) for c in columns[1:]]
     leaf_count = -(-count // length)
     size, order = keys.size, nodes.order
-    per_stride = STRIDE // base
+    unit = min(length, STRIDE)
     longest = min(count, STRIDE)
     buffer = np.empty((order, longest))
     offsets = np.arange(longest) // base * size
-    parts = []
+    sums = np.empty((len(columns), leaf_count * (length // unit), size, order))
+    sums[:, -(-count // unit) :] = 0
     for start in range(0, count, STRIDE):
         here = slice(start, min(start + STRIDE, count))
         number = here.stop - here.start
-        blocks = per_stride if length > base else -(-number // base)
+        blocks = STRIDE // base if length > base else -(-number // base)
         place, coordinate = locate(here)
         bins = place + offsets[:number]
         values = chebyshev_values(coordinate, order, out=buffer[:, :number])
         total = np.empty((len(columns), order, blocks * size))
         for c, weight in enumerate(weights):
             for j in range(order):
-                if weight is None:
-                    total[c, j] = np.bincount(bins, values[j] if j else None, minlength=blocks * size)
-                else:
-                    weighted = weight[here] * values[j] if j else weight[here]
-                    total[c, j] = np.bincount(bins, weighted, minlength=blocks * size)
-        folded = total.reshape(len(columns), order, blocks, size)
-        parts.append(_pairwise(folded, 2, _doublings(min(length, STRIDE), base)))
-    joined = np.concatenate(parts, axis=2)
-    if length > STRIDE:
-        missing = leaf_count * (length // STRIDE) - joined.shape[2]
-        joined = np.concatenate([joined, np.zeros((*joined.shape[:2], missing, size))], axis=2)
-        joined = _pairwise(joined, 2, _doublings(length, STRIDE))
-    joined = joined[:, :, :leaf_count]
-    occupied = joined[0, 0].any(axis=0)
+                factor = values[j] if j else None
+                if weight is not None:
+                    factor = weight[here] if factor is None else weight[here] * factor
+                total[c, j] = np.bincount(bins, factor, minlength=blocks * size)
+        folded = _pairwise(total.reshape(len(columns), order, blocks, size), 2, _doublings(unit, base))
+        filled = sums[:, start // unit : -(-here.stop // unit)]
+        filled[...] = folded[:, :, : filled.shape[1]].transpose(0, 2, 3, 1)
+    sums = _pairwise(sums, 1, _doublings(length, unit))
+    occupied = np.flatnonzero(sums[0, :, :, 0].any(axis=0))
     lengths = np.full(leaf_count, length, dtype=np.int64)
     if count % length:
         lengths[-1] = count % length
     return LeafSums(
         keys=keys[occupied],
-        sums=np.ascontiguousarray(joined[:, :, :, occupied].transpose(0, 2, 3, 1)),
+        sums=sums if occupied.size == size else sums.take(occupied, axis=2),
         rows=lengths,
     )
 
 
-def join_leaves(first: LeafSums, second: LeafSums) -> LeafSums:
-    """Leaves of two stretches of one run, one after the other."""
-    keys = np.union1d(first.keys, second.keys)
-    leaves = first.rows.size + second.rows.size
-    sums = np.zeros((first.sums.shape[0], leaves, keys.size, first.sums.shape[3]))
-    sums[:, : first.rows.size, np.searchsorted(keys, first.keys)] = first.sums
-    sums[:, first.rows.size :, np.searchsorted(keys, second.keys)] = second.sums
-    return LeafSums(keys=keys, sums=sums, rows=np.concatenate([first.rows, second.rows]))
+def join_leaves(parts: Sequence[LeafSums]) -> LeafSums:
+    """Leaves of consecutive stretches of one run."""
+    if len(parts) == 1:
+        return parts[0]
+    keys = np.unique(np.concatenate([part.keys for part in parts]))
+    rows = np.concatenate([part.rows for part in parts])
+    columns, _, _, order = parts[0].sums.shape
+    sums = np.zeros((columns, rows.size, keys.size, order))
+    start = 0
+    for part in parts:
+        here = sums[:, start : start + part.rows.size]
+        if part.keys.size == keys.size:  # the usual case, and many times faster than placing them one by one
+            here[...] = part.sums
+        else:
+            here[:, :, np.searchsorted(keys, part.keys)] = part.sums
+        start += part.rows.size
+    return LeafSums(keys=keys, sums=sums, rows=rows)
 
 
 class RunTally:
@@ -273,9 +278,9 @@ class RunTally:
         self.columns = tuple(columns)
         self.observables = tuple(observables)
         self.row_count = 0
-        self.leaves: LeafSums | None = None
         self.thinned: Thinned | None = None
         self._batch = BATCH
+        self._parts: list[LeafSums] = []
         self._waiting: list[NDArray[np.float64]] = []
         self._waiting_count = 0
 
@@ -292,7 +297,7 @@ class RunTally:
     ) -> RunTally:
         """Put a tally together again as it was saved; more rows can be added."""
         tally = cls(nodes, columns, observables)
-        tally.leaves, tally.thinned = leaves, thinned
+        tally._parts, tally.thinned = [leaves] if leaves else [], thinned
         tally._waiting, tally._waiting_count = [tail], tail.shape[0]
         tally.row_count = tail.shape[0] + (int(leaves.rows.sum()) if leaves else 0)
         if leaves is not None:
@@ -301,6 +306,13 @@ class RunTally:
             while tally._batch <= tally._waiting_count:  # it was found too wide for leaves before
                 tally._batch *= 2
         return tally
+
+    @property
+    def leaves(self) -> LeafSums | None:
+        """Complete leaves; none as long as rows are kept."""
+        if len(self._parts) > 1:
+            self._parts = [join_leaves(self._parts)]
+        return self._parts[0] if self._parts else None
 
     @property
     def tail(self) -> NDArray[np.float64]:
@@ -326,36 +338,40 @@ class RunTally:
 
     def _absorb(self, rows: NDArray[np.float64]) -> int:
         """Turn one batch into leaves; return how many rows were used (none if they are better kept)."""
-        length = int(self.leaves.rows[0]) if self.leaves is not None else self._batch // 64
+        length = int(self._parts[0].rows[0]) if self._parts else self._batch // 64
         new = leaf_sums(rows, length, self.nodes, self.columns, self.observables)
-        if self.leaves is None:
+        if not self._parts:
             if new.sums.size > rows.size:
                 self._batch *= 2
                 return 0
-            self.leaves = new
             self.thinned = _thin(rows, length // GROUPS_A_LEAF, rows[0])
         else:
             assert self.thinned is not None
-            self.leaves = join_leaves(self.leaves, new)
             more = _thin(rows, self.thinned.group, self.thinned.origin)
             self.thinned.sums = np.concatenate([self.thinned.sums, more.sums])
             self.thinned.squares = np.concatenate([self.thinned.squares, more.squares])
-        if self.leaves.rows.size == MOST_LEAVES:
-            self.leaves.sums = _pairwise(self.leaves.sums, 1, 1)
-            self.leaves.rows = self.leaves.rows[::2] * 2
+        self._parts.append(new)
+        if sum(part.rows.size for part in self._parts) == MOST_LEAVES:
+            leaves = join_leaves(self._parts)
+            length *= 2
+            self._parts = [LeafSums(leaves.keys, _pairwise(leaves.sums, 1, 1), leaves.rows[::2] * 2)]
             self.thinned.group *= 2
             self.thinned.sums = _pairwise(self.thinned.sums, 0, 1)
             self.thinned.squares = _pairwise(self.thinned.squares, 0, 1)
-        self._batch = max(BATCH, int(self.leaves.rows[0]))
-        absorbed = int(self.leaves.rows.sum())  # not row_count: how many rows wait depends on the chunks
-        if self.nodes.discrete and not are_levels(self.leaves.keys.size, absorbed):
-            self._become_panels()
+        self._batch = max(BATCH, length)
+        if self.nodes.discrete:
+            self._leave_levels()
         return int(rows.shape[0])
 
-    def _become_panels(self) -> None:
-        assert self.leaves is not None
-        keys, sums = pour(np.asarray(self.leaves.keys, float), self.leaves.sums, self.nodes.width)
-        self.leaves = LeafSums(keys=keys, sums=sums, rows=self.leaves.rows)
+    def _leave_levels(self) -> None:
+        """Pour levels into panels if they are too many for the rows in the leaves."""
+        leaves = self.leaves
+        assert leaves is not None
+        # Not row_count: how many rows wait depends on the chunks.
+        if are_levels(leaves.keys.size, int(leaves.rows.sum())):
+            return
+        keys, sums = pour(np.asarray(leaves.keys, float), leaves.sums, self.nodes.width)
+        self._parts = [LeafSums(keys=keys, sums=sums, rows=leaves.rows)]
         self.nodes = Nodes(self.nodes.width, discrete=False, spacing=self.nodes.spacing)
 
     def complete(self) -> tuple[LeafSums, Thinned]:
@@ -377,7 +393,7 @@ class RunTally:
             sums=np.concatenate([self.thinned.sums, more.sums]),
             squares=np.concatenate([self.thinned.squares, more.squares]),
         )
-        return join_leaves(self.leaves, rest), thinned
+        return join_leaves([*self._parts, rest]), thinned
 
 
 def _thin(rows: NDArray[np.float64], group: int, origin: NDArray[np.float64]) -> Thinned:

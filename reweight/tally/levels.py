@@ -1,8 +1,8 @@
 """Levels: discrete energies (a lattice, or few printed digits) counted one by one.
 
 While the distinct energies are few and each is seen several times, they are the nodes and the weights are counts:
-no approximation at all.  Files with few digits blur a level into several values a rounding error apart; a regular
-spacing behind them is looked for, and energies are snapped to it.  When distinct values become too many, the counts
+no approximation at all.  Rounding that has piled up (running sums, products of printed values) blurs a level into
+several values a little apart; a regular spacing behind them is looked for, and energies are snapped to it.  When distinct values become too many, the counts
 are poured into panels, which loses nothing the panels would have kept.
 """
 

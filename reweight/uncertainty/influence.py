@@ -65,7 +65,9 @@ def chain(canonical: Canonical, moments: Moments, gradient: dict[Moment, Array])
 def with_free_energies(estimate: Estimate, direct: dict[Column, Array]) -> dict[Column, Array]:
     """Add the answer's response to the shift of the free energies that the sample causes."""
     probabilities = estimate.solution.probabilities
-    pulled = sum(estimate.column(column)[:, None] * phi for column, phi in direct.items())
+    pulled = np.zeros_like(direct[COUNT])
+    for column, phi in direct.items():
+        pulled += estimate.column(column)[:, None] * phi
     direct[COUNT] = direct[COUNT] + product(probabilities.T, estimate.spread(product(probabilities, pulled)))
     return direct
 
@@ -79,7 +81,7 @@ def block_sums(estimate: Estimate, influences: Influence) -> list[Array]:
             part = product(run.weights[estimate.columns.index(column)], phi[run.index])
             total = part if total is None else total + part
         assert total is not None
-        blocks.append(centred(total, run.counts))
+        blocks.append(centred(total / run.weighting, run.counts))
     return blocks
 
 

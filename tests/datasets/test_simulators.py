@@ -66,8 +66,8 @@ def four_bead_means(chain, temperature):
     sines = np.sqrt((1 - first**2) * (1 - second**2))
     # bonds b1, b2, b3 with b1.b2 = c1, b2.b3 = c2 and b1.b3 = c1 c2 + s1 s2 cos(torsion)
     end_to_end = 3 + 2 * (first + second + first * second + sines * np.cos(third))
-    attraction = ((chain.well_distance / chain.bond_length) ** 2 / np.maximum(end_to_end, 1e-12)) ** 3
-    cut = (chain.well_distance / chain.cutoff) ** 6
+    attraction = ((chain.well_distance / chain.bond_length) ** 2 / np.maximum(end_to_end, 1e-12)) ** 2
+    cut = (chain.well_distance / chain.cutoff) ** 4
     shift = cut**2 - 2 * cut
     pair = np.where(attraction > cut, attraction**2 - 2 * attraction - shift, 0.0) * chain.well_depth
     energy = chain.stiffness * (2 - first - second) + pair

@@ -41,7 +41,9 @@ def test_node_weights_integrate_polynomials_below_the_order_exactly(degree: int,
 
     scaled = polynomial(energies / width)
     # rounding: the terms cancel, so their own size is the measure
-    assert weights @ polynomial(at_nodes / width) == pytest.approx(scaled.sum(), abs=1e-13 * np.abs(scaled).sum())
+    assert weights @ polynomial(at_nodes / width) == pytest.approx(
+        scaled.sum(), abs=1e-13 * np.abs(scaled).sum()
+    )
 
 
 def test_one_degree_more_is_not_exact() -> None:
@@ -125,7 +127,9 @@ def test_a_resolution_narrows_panels_and_constant_runs_get_a_width() -> None:
 def test_chebyshev_values_are_those_of_the_cosine() -> None:
     x = np.linspace(-1, 1, 101)
 
-    np.testing.assert_allclose(chebyshev_values(x), np.cos(np.arange(ORDER)[:, None] * np.arccos(x)), atol=1e-13)
+    np.testing.assert_allclose(
+        chebyshev_values(x), np.cos(np.arange(ORDER)[:, None] * np.arccos(x)), atol=1e-13
+    )
 
 
 def test_nodes_are_the_zeros_of_the_next_polynomial_in_ascending_order() -> None:

@@ -1,0 +1,78 @@
+"""Tally and solve, against pymbar on the same samples: ``python speed_against_reference.py [REPETITIONS]``.
+
+16 runs of 20,000 samples.  Both sides start from the bare energies of the runs and end with the free energies; the
+reduced energies pymbar wants (K, K N) are made beforehand and cost it nothing.  pymbar without JAX; its default, and the
+fastest setting found: two-run (BAR) initial values, then each of its solvers.
+"""
+
+from __future__ import annotations
+
+import functools
+import logging
+import sys
+import warnings
+from collections.abc import Callable
+
+import numpy as np
+from gamma_study import energies, leaves_of, nodes_for, solved, temperatures
+from side_by_side import Taken, medians, say_rows, say_target, table_rows
+
+logging.disable(logging.WARNING)  # pymbar announces that it runs without JAX
+warnings.simplefilter("ignore")
+
+from pymbar import MBAR  # noqa: E402
+
+RUNS, ROWS = 16, 20_000
+TARGET_FASTEST, TARGET_DEFAULT = 200.0, 500.0
+
+SETTINGS: dict[str, dict[str, object]] = {
+    "default": {},
+    "two-run start, default solver": {"initialize": "BAR"},
+    "two-run start, robust": {"initialize": "BAR", "solver_protocol": "robust"},
+    "two-run start, adaptive": {
+        "initialize": "BAR",
+        "solver_protocol": ({"method": "adaptive", "options": {"min_sc_iter": 0}},),
+    },
+    "two-run start, hybr": {"initialize": "BAR", "solver_protocol": ({"method": "hybr"},)},
+}
+
+
+def main(repetitions: int) -> None:
+    """Time, compare the free energies, print."""
+    samples = energies(RUNS, ROWS)
+    nodes = nodes_for(samples)
+    reduced = (samples.ravel() - samples.mean()) / temperatures(RUNS)[:, None]
+    counts = np.full(RUNS, ROWS)
+
+    def ours() -> np.ndarray:
+        return solved([leaves_of(run, nodes) for run in samples]).solution.free_energies
+
+    jobs: dict[str, Callable[[], object]] = {"ours": ours}
+    for name, setting in SETTINGS.items():
+        jobs[name] = functools.partial(MBAR, reduced, counts, **setting)
+        jobs[f"ours after {name}"] = ours  # a few milliseconds need more repetitions to be known
+    taken = medians(jobs, repetitions)
+    mine = Taken(
+        *(
+            float(np.median(each))
+            for each in zip(*(taken[n] for n in taken if n.startswith("ours")), strict=True)
+        )
+    )
+
+    estimate = solved([leaves_of(run, nodes) for run in samples])
+    shift = (estimate.assembly.reference - samples.mean()) / temperatures(RUNS)
+    free = estimate.solution.free_energies + shift
+    theirs = MBAR(reduced, counts, initialize="BAR").f_k
+    worst = float(np.abs(free - free[0] - theirs + theirs[0]).max())
+    shown = {"ours": mine} | {f"pymbar, {name}": taken[name] for name in SETTINGS}
+    say_rows(
+        f"{RUNS} runs x {ROWS:,} samples; free energies differ by at most {worst:.1e}",
+        table_rows(shown, mine, "ours"),
+    )
+    fastest = min(taken[name].wall for name in SETTINGS if name != "default")
+    say_target("pymbar's fastest setting, times ours", fastest / mine.wall, TARGET_FASTEST)
+    say_target("pymbar's default, times ours", taken["default"].wall / mine.wall, TARGET_DEFAULT)
+
+
+if __name__ == "__main__":
+    main(int(sys.argv[1]) if len(sys.argv) > 1 else 3)
