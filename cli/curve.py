@@ -11,6 +11,8 @@ from reweight.cli import options, screen
 if TYPE_CHECKING:
     import xarray as xr
 
+    from reweight.density_of_states import DensityOfStates
+
 __all__ = ["curve"]
 
 
@@ -22,7 +24,10 @@ __all__ = ["curve"]
 @options.at_options
 @options.range_options
 @click.option(
-    "--reference", type=float, metavar="T", help="Where entropies are counted from.  [default: coldest run]"
+    "--reference",
+    type=float,
+    metavar="T",
+    help="Where entropies are counted from.  [default: coldest run in reach]",
 )
 @options.question_options
 @options.output_options
@@ -56,11 +61,13 @@ def curve(
 
     combined = screen.opened(file, quiet=quiet)
     if "list" in of:
-        screen.print_table(
-            ("name", "what"),
-            [(each.name, each.long_name) for each in available(combined.description.normalisations).values()],
-            left=(0, 1),
-        )
+        listed = {
+            each.name: each.long_name for each in available(combined.description.normalisations).values()
+        }
+        if as_json:
+            screen.print_json(screen.envelope(combined, "quantities", level=None, quantities=listed))
+        else:
+            screen.print_table(("name", "what"), list(listed.items()), left=(0, 1))
         return
     if at and (points is not None or lowest is not None or highest is not None):
         raise click.UsageError(
@@ -91,7 +98,7 @@ def curve(
 
         save_figure(curve_figure(combined, dataset), plot, force=force, inputs=[file])
     if as_json:
-        screen.print_json(screen.envelope(combined, "curve", level=level, **_content(dataset)))
+        screen.print_json(screen.envelope(combined, "curve", level=level, **_content(combined, dataset)))
     else:
         _print(dataset)
     outside = int((~dataset["within_reach"]).sum())
@@ -102,11 +109,12 @@ def _labels(dataset: xr.Dataset) -> list[str]:
     return [str(name) for name in dataset.data_vars if f"{name}_interval" in dataset]
 
 
-def _content(dataset: xr.Dataset) -> dict[str, Any]:
+def _content(combined: DensityOfStates, dataset: xr.Dataset) -> dict[str, Any]:
     labels = _labels(dataset)
     names = ["temperature", *labels]
     content: dict[str, Any] = {"units": {name: dataset[name].attrs["units"] for name in names}}
     content["temperature"] = dataset["temperature"].to_numpy()
+    content["beta"] = combined.description.inverse_temperature(content["temperature"])
     for label in labels:
         for part in ("", "_standard_error", "_interval", "_within_reach", "_variance_share"):
             content[label + part] = dataset[label + part].to_numpy()

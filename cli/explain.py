@@ -2,9 +2,13 @@
 
 from __future__ import annotations
 
+import textwrap
+
 import click
 
 __all__ = ["explain"]
+
+WIDEST = 90
 
 
 @click.command(short_help="What a word on the screen means, and why its limits are what they are.")
@@ -15,6 +19,6 @@ def explain(word: tuple[str, ...]) -> None:
 
     if not word:
         for name, first in words().items():
-            click.echo(f"{name:24}  {first}")
+            click.echo(f"{name:24}  {textwrap.shorten(first, WIDEST, placeholder=' ...')}")
         return
     click.echo(text(" ".join(word)))

@@ -58,7 +58,7 @@ bin_option = click.option(
     "--bin-width",
     type=float,
     metavar="E",
-    help="Width of energy bins.  [default: single levels, or four of the finest bins kept]",
+    help="Width of energy bins.  [default: single levels, or two of the finest bins kept]",
 )
 
 

@@ -127,5 +127,5 @@ def describe_extension(found: Peak) -> list[str]:
     error = found.temperature_standard_error
     return [
         f"  {100 * share:.0f} % of the variance of the position comes from {name}: four times its samples would bring "
-        f"the error from {error:.2g} to {error * (1 - 0.75 * share) ** 0.5:.2g}"
+        f"the error from {error:.2g} to {error * (1 - 0.75 * share) ** 0.5:.2g} or less"
     ]

@@ -44,7 +44,7 @@ def _print(combined: DensityOfStates, reaches: dict[str, Reach]) -> None:
     click.echo(f"{description.title or 'untitled study'}")
     click.echo(f"  {screen.units_text(description)}")
     facts = {
-        "count": None if description.count is None else f"{description.count:,} ({description.per})",
+        "count": None if description.count is None else f"{description.count:,}, per {description.per}",
         "length": None if description.length is None else f"{description.length:g}",
         "dimension": description.dimension,
         "states": description.states,

@@ -1,6 +1,6 @@
 """From runs to the combined object: look at the first rows, tally in one pass, decide, solve.
 
-A sample's way: a source yields chunks of rows (energy, observables); a :class:`~reweight.tally.leaves.RunTally` turns
+A sample's way: a source yields chunks of rows (energy, observables); a :class:`~reweight.tally.run_tally.RunTally` turns
 them into leaves; transient and inefficiency are decided from the thinned series; the leaves kept are weighted and the
 free energies solved for.
 """
@@ -24,9 +24,11 @@ from reweight.runs import Source
 from reweight.series.correlation import Inefficiency, shrink, statistical_inefficiency
 from reweight.series.transient import transient_length
 from reweight.tally.assemble import Assembly, assemble
-from reweight.tally.leaves import Nodes, RunTally, Thinned
 from reweight.tally.levels import are_levels, find_spacing
+from reweight.tally.nodes import Nodes
 from reweight.tally.panels import panel_width
+from reweight.tally.run_tally import RunTally
+from reweight.tally.thinned import Thinned
 
 __all__ = ["Progress", "combine_sources", "decide", "estimate_of", "tally_sources", "weighted"]
 

@@ -23,7 +23,9 @@ from reweight.quantities.catalogue import available, named
 from reweight.quantities.quantity import Quantity
 from reweight.series.correlation import Inefficiency
 from reweight.study.values import base_and_power
-from reweight.tally.leaves import COUNT, Column, RunTally, Thinned
+from reweight.tally.nodes import COUNT, Column
+from reweight.tally.run_tally import RunTally
+from reweight.tally.thinned import Thinned
 
 __all__ = ["Decision", "DensityOfStates", "Description", "LeftOut", "ObservableDescription", "RunRecord"]
 

@@ -27,8 +27,8 @@ from reweight.multistate import (
     reference_run,
     solve_reduced,
 )
-from reweight.tally.assemble import Assembly
-from reweight.tally.leaves import Column
+from reweight.tally.assemble import Assembly, Matrix
+from reweight.tally.nodes import Column
 
 __all__ = ["Canonical", "Estimate", "RunLeaves"]
 
@@ -43,7 +43,7 @@ class RunLeaves:
     ----------
     index : numpy.ndarray, shape (q,)
         Places of the run's nodes among all nodes.
-    weights : numpy.ndarray, shape (C, B, q)
+    weights : tuple of arrays, length C, shape (B, q)
         In samples: shared with the assembly, since a copy would be as large as everything else together.
     weighting : float
         Samples per unit of weight.
@@ -54,7 +54,7 @@ class RunLeaves:
     """
 
     index: NDArray[np.int64]
-    weights: Array
+    weights: tuple[Matrix, ...]
     weighting: float
     counts: Array
     total: Array
@@ -121,9 +121,9 @@ class Estimate:
         shares = weighting / inefficiencies
         runs = []
         for i, run in enumerate(assembly.runs):
-            kept = run.weights[:, first_leaves[i] :]
+            kept = tuple(column[first_leaves[i] :] for column in run.weights)
             counts = run.rows[first_leaves[i] :] / weighting[i]
-            total = kept.sum(axis=1) / weighting[i]
+            total = np.array([np.asarray(column.sum(axis=0)).ravel() for column in kept]) / weighting[i]
             runs.append(RunLeaves(run.index, kept, float(weighting[i]), counts, total))
             weights[:, run.index] += total
             independent[run.index] += total[0] * shares[i]

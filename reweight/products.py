@@ -1,6 +1,6 @@
 """Matrix products on one thread: as fast on a busy machine as on an idle one, and the same bits on both.
 
-Array layer: NumPy only.
+Array layer: NumPy and SciPy only.
 
 A linear-algebra library hands a product to several threads once it is large enough.  Where other programs keep the
 cores busy, the threads then wait for one another, a time slice of the scheduler at a time: 8 to 50 ms were measured
@@ -12,6 +12,7 @@ from __future__ import annotations
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.sparse import csr_array
 
 __all__ = ["COLUMNS", "product"]
 
@@ -20,18 +21,20 @@ ROWS = 32
 COLUMNS = 16  # right-hand sides that triangular solvers still treat on one thread (measured)
 
 
-def product(left: NDArray[np.float64], right: NDArray[np.float64]) -> NDArray[np.float64]:
+def product(left: NDArray[np.float64] | csr_array, right: NDArray[np.float64]) -> NDArray[np.float64]:
     """Matrix product, piece by piece.
 
     Parameters
     ----------
-    left : numpy.ndarray, shape (M, K)
+    left : numpy.ndarray or sparse array, shape (M, K)
     right : numpy.ndarray, shape (K, N)
 
     Returns
     -------
     numpy.ndarray, shape (M, N)
     """
+    if isinstance(left, csr_array):  # never divided among threads
+        return np.asarray(left @ right)
     height, (inner, width) = left.shape[0], right.shape
     result = np.empty((height, width))
     for top in range(0, height, ROWS):

@@ -28,8 +28,11 @@ from reweight.multistate import solution_at
 from reweight.reading.netcdf import NETCDF_LOCK
 from reweight.series.correlation import Inefficiency
 from reweight.tally.assemble import assemble
-from reweight.tally.leaves import LeafSums, Nodes, RunTally, Thinned
+from reweight.tally.leaves import LeafSums
 from reweight.tally.levels import Spacing
+from reweight.tally.nodes import Nodes
+from reweight.tally.run_tally import RunTally
+from reweight.tally.thinned import Thinned
 
 __all__ = ["SCHEMA_VERSION", "open_combined", "save"]
 

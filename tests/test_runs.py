@@ -306,7 +306,7 @@ def test_other_arguments_that_make_no_sense_are_refused(keys: dict[str, Any], me
 
 
 def test_a_study_file_is_not_told_again_what_it_says_itself() -> None:
-    with pytest.raises(rw.InputError, match="a study file says .* itself"):
+    with pytest.raises(rw.InputError, match=r"a study file says .* itself"):
         rw.combine("study.toml", temperatures=[1.0])
 
 

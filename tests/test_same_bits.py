@@ -20,8 +20,9 @@ import reweight as rw
 from reweight.combining import combine_sources
 from reweight.density_of_states import Description, ObservableDescription
 from reweight.runs import Source
-from reweight.tally.leaves import COUNT, Column, Nodes, RunTally
 from reweight.tally.levels import Spacing
+from reweight.tally.nodes import COUNT, Column, Nodes
+from reweight.tally.run_tally import RunTally
 
 Rows = NDArray[np.float64]
 

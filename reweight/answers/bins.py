@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 from reweight.density_of_states import DensityOfStates
 from reweight.errors import InputError
 from reweight.tally.assemble import Assembly
-from reweight.tally.leaves import COUNT
+from reweight.tally.nodes import COUNT
 from reweight.uncertainty.influence import Influence, block_sums, with_free_energies
 
 __all__ = ["Bins", "bin_blocks", "energy_bins"]
@@ -24,7 +24,7 @@ __all__ = ["Bins", "bin_blocks", "energy_bins"]
 Array = NDArray[np.float64]
 
 BINS_AT_ONCE = 256
-PANELS_A_BIN = 4
+PANELS_A_BIN = 2
 FEWEST_VISITS = 10.0
 
 
@@ -67,7 +67,7 @@ def energy_bins(combined: DensityOfStates, width: float | None = None) -> Bins:
     Parameters
     ----------
     width : float, optional
-        Wanted width, in the study's energy unit; by default every level its own bin, or four panels.  Panels are
+        Wanted width, in the study's energy unit; by default every level its own bin, or two panels.  Panels are
         never cut: the width is rounded to the nearest multiple of theirs.
 
     Raises

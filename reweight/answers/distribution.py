@@ -43,7 +43,7 @@ def distribution(
     of : str
         ``"energy"``.
     bin_width : float, optional
-        In the study's energy unit; by default each level by itself, or four of the finest bins kept.
+        In the study's energy unit; by default each level by itself, or two of the finest bins kept.
     level : float
         Of the confidence intervals.
     beyond_reach : bool
@@ -160,9 +160,9 @@ def _own(combined: DensityOfStates, bins: Bins, place: int) -> Array:
 
 def _inverse(unit: str) -> str:
     """UDUNITS spelling of one over a unit."""
-    factors = []
+    powers = []
     for factor in unit.split(" "):
         name = factor.rstrip("-0123456789")
-        power = -int(factor[len(name) :] or 1)
-        factors.append(name if power == 1 else f"{name}{power}")
-    return " ".join(factors)
+        powers.append((name, -int(factor[len(name) :] or 1)))
+    powers.sort(key=lambda each: -each[1])  # mol kJ-1, not kJ-1 mol
+    return " ".join(name if power == 1 else f"{name}{power}" for name, power in powers)

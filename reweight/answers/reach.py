@@ -21,7 +21,7 @@ from reweight.density_of_states import DensityOfStates
 from reweight.estimate import Canonical, Estimate
 from reweight.quantities.moments import Moments
 from reweight.quantities.quantity import Quantity
-from reweight.tally.leaves import COUNT
+from reweight.tally.nodes import COUNT
 from reweight.uncertainty.influence import Influence, influence
 
 __all__ = ["Reach", "carriers", "end_mass", "judge", "reach", "supported"]

@@ -21,7 +21,7 @@ from reweight.answers.reach import MOST_END_MASS
 from reweight.density_of_states import DensityOfStates
 from reweight.errors import InputError, OutOfReachError
 from reweight.labels import energy_unit_label, error_attributes, value_attributes
-from reweight.tally.leaves import COUNT
+from reweight.tally.nodes import COUNT
 from reweight.uncertainty.influence import Influence, block_sums, with_free_energies
 from reweight.uncertainty.intervals import check_level, half_width
 from reweight.uncertainty.window import variance
@@ -43,7 +43,7 @@ def states(
     ----------
     combined : DensityOfStates
     bin_width : float, optional
-        In the study's energy unit; by default each level by itself, or four of the finest bins kept.
+        In the study's energy unit; by default each level by itself, or two of the finest bins kept.
     absolute : bool
         Fix the constant by the study's declared number of states or ground degeneracy, if that was sampled.
     level : float

@@ -33,6 +33,8 @@ def draw_distribution(axes: Axes, dataset: xr.Dataset) -> Axes:
             linewidth=0.7,
             label=label,
         )
+    unit = dataset["temperature"].attrs["units"]
+    unit = "" if unit == "1" else f" {unit}"
     for place, temperature in enumerate(dataset["temperature"].to_numpy()):
         value = dataset["probability"][place].to_numpy()
         if np.isnan(value).all():

@@ -15,7 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from reweight.estimate import Canonical
-from reweight.tally.leaves import COUNT, Column
+from reweight.tally.nodes import COUNT, Column
 
 __all__ = ["LOG_PARTITION", "Moment", "Moments"]
 

@@ -6,7 +6,7 @@ import numpy as np
 
 from reweight.quantities.moments import Moment, Moments
 from reweight.quantities.quantity import Array, Measure, Quantity, Scaling
-from reweight.tally.leaves import Column
+from reweight.tally.nodes import Column
 
 __all__ = ["ObservableCovariance", "ObservableSlope"]
 

@@ -22,6 +22,7 @@ from reweight.study.values import (
     Encoding,
     EnergyUnit,
     FileNames,
+    Line,
     Moments,
     Name,
     Normalisation,
@@ -119,7 +120,7 @@ class Run(_Table):
     files: FileNames
     discard: Discard = "auto"
     use: bool = True
-    reason: str = ""
+    reason: Line = ""
 
     @model_validator(mode="before")
     @classmethod
@@ -167,7 +168,7 @@ class Study(_Table):
     """A whole study file; from :func:`reweight.study.load_study` or :func:`reweight.study.parse_study`."""
 
     schema_version: Literal[1] = Field(alias="schema")
-    title: str = ""
+    title: Line = ""
     energy_unit: EnergyUnit
     temperature_unit: Literal["K", "degC", "reduced"]
     energy_kind: Literal["potential", "total"] = "potential"

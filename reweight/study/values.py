@@ -69,6 +69,12 @@ def _plain_name(value: str) -> str:
     return value
 
 
+def _one_line(value: str) -> str:
+    if not value.isprintable():
+        raise ValueError(f"must be one line of printable text; got {value!r}")
+    return value
+
+
 def _run_name(value: str) -> str:
     if "/" in value or value in {".", ".."}:
         raise ValueError(f"must do without '/' (it becomes the name of a group); got {value!r}")
@@ -186,6 +192,7 @@ def _finite_and_positive(value: float) -> float:
 
 
 Name = Annotated[str, AfterValidator(_plain_name)]
+Line = Annotated[str, AfterValidator(_one_line)]
 RunName = Annotated[str, AfterValidator(_run_name)]
 Unit = Annotated[str, AfterValidator(_any_unit)]
 EnergyUnit = Annotated[str, AfterValidator(_energy_unit)]

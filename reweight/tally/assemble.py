@@ -10,12 +10,16 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.sparse import csr_array
 
-from reweight.tally.leaves import LeafSums, RunTally
+from reweight.tally.leaves import LeafSums, ScatteredSums
 from reweight.tally.levels import are_levels, pour
 from reweight.tally.panels import ORDER, node_energies, node_matrix
+from reweight.tally.run_tally import RunTally
 
-__all__ = ["Assembly", "RunWeights", "assemble"]
+__all__ = ["Assembly", "Matrix", "RunWeights", "assemble"]
+
+Matrix = NDArray[np.float64] | csr_array
 
 
 @dataclass(frozen=True, slots=True)
@@ -26,14 +30,15 @@ class RunWeights:
     ----------
     index : numpy.ndarray, shape (q,)
         Places of the run's nodes among all nodes.
-    weights : numpy.ndarray, shape (C, B, q)
-        Plain counts first, then the counts weighted with each observable moment; in samples.
+    weights : tuple of arrays, length C, shape (B, q)
+        Plain counts first, then the counts weighted with each observable moment; in samples.  Sparse where a run
+        visits few of its panels in each leaf.
     rows : numpy.ndarray, shape (B,)
         Rows in each leaf.
     """
 
     index: NDArray[np.int64]
-    weights: NDArray[np.float64]
+    weights: tuple[Matrix, ...]
     rows: NDArray[np.int64]
 
 
@@ -66,7 +71,7 @@ class Assembly:
     runs: tuple[RunWeights, ...]
 
 
-def assemble(tallies: Sequence[RunTally], leaves: Sequence[LeafSums]) -> Assembly:
+def assemble(tallies: Sequence[RunTally], leaves: Sequence[LeafSums | ScatteredSums]) -> Assembly:
     """Bring completed tallies onto common nodes; levels become panels if any run has too many of them."""
     width = tallies[0].nodes.width
     keys = np.unique(np.concatenate([part.keys for part in leaves]))
@@ -89,8 +94,7 @@ def assemble(tallies: Sequence[RunTally], leaves: Sequence[LeafSums]) -> Assembl
     for part in leaves:
         place = np.searchsorted(keys, part.keys)
         index = (place[:, None] * order + np.arange(order)).ravel()
-        weights = part.sums if discrete else part.sums @ matrix
-        runs.append(RunWeights(index=index, weights=weights.reshape(*weights.shape[:2], -1), rows=part.rows))
+        runs.append(RunWeights(index=index, weights=_node_weights(part, order, matrix), rows=part.rows))
     return Assembly(
         keys=keys,
         energies=np.asarray(energies, float),
@@ -102,6 +106,19 @@ def assemble(tallies: Sequence[RunTally], leaves: Sequence[LeafSums]) -> Assembl
     )
 
 
-def _poured(part: LeafSums, width: float) -> LeafSums:
+def _node_weights(
+    part: LeafSums | ScatteredSums, order: int, matrix: NDArray[np.float64]
+) -> tuple[Matrix, ...]:
+    weights = part.sums @ matrix
+    shape = (part.rows.size, part.keys.size * order)
+    if isinstance(part, LeafSums):
+        return tuple(column.reshape(shape) for column in weights)
+    leaf = np.repeat(part.leaf, order)
+    node = (part.place[:, None] * order + np.arange(order)).ravel()
+    return tuple(csr_array((column.ravel(), (leaf, node)), shape=shape) for column in weights)
+
+
+def _poured(part: LeafSums | ScatteredSums, width: float) -> LeafSums:
+    assert isinstance(part, LeafSums)  # only panels are ever scattered
     keys, sums = pour(np.asarray(part.keys, float), part.sums, width)
     return LeafSums(keys=keys, sums=sums, rows=part.rows)

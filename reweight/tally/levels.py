@@ -2,8 +2,8 @@
 
 While the distinct energies are few and each is seen several times, they are the nodes and the weights are counts:
 no approximation at all.  Rounding that has piled up (running sums, products of printed values) blurs a level into
-several values a little apart; a regular spacing behind them is looked for, and energies are snapped to it.  When distinct values become too many, the counts
-are poured into panels, which loses nothing the panels would have kept.
+several values a little apart; a regular spacing behind them is looked for, and energies are snapped to it.  When
+distinct values become too many, the counts are poured into panels, which loses nothing the panels would have kept.
 """
 
 from __future__ import annotations

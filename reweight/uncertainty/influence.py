@@ -19,7 +19,7 @@ from reweight.estimate import Canonical, Estimate
 from reweight.products import product
 from reweight.quantities.moments import LOG_PARTITION, Moment, Moments
 from reweight.quantities.quantity import Quantity
-from reweight.tally.leaves import COUNT, Column
+from reweight.tally.nodes import COUNT, Column
 
 __all__ = ["Influence", "block_sums", "centred", "influence"]
 

@@ -8,8 +8,10 @@ from numpy.typing import NDArray
 from reweight.estimate import Estimate
 from reweight.multistate import Solution, pairwise_start, solve
 from reweight.tally.assemble import assemble
-from reweight.tally.leaves import COUNT, LeafSums, Nodes, RunTally
+from reweight.tally.leaves import LeafSums, ScatteredSums
+from reweight.tally.nodes import COUNT, Nodes
 from reweight.tally.panels import panel_width
+from reweight.tally.run_tally import RunTally
 
 __all__ = ["energies", "leaves_of", "nodes_for", "solved", "temperatures"]
 
@@ -38,14 +40,14 @@ def nodes_for(samples: Array) -> Nodes:
     return Nodes(panel_width(deviation, float(np.abs(np.diff(beta)).max(initial=0.0))))
 
 
-def leaves_of(samples: Array, nodes: Nodes) -> tuple[RunTally, LeafSums]:
+def leaves_of(samples: Array, nodes: Nodes) -> tuple[RunTally, LeafSums | ScatteredSums]:
     """Tally one run, shape (N,)."""
     tally = RunTally(nodes, (COUNT,), ())
     tally.add(samples[:, None])
     return tally, tally.complete()[0]
 
 
-def solved(tallied: list[tuple[RunTally, LeafSums]]) -> Estimate:
+def solved(tallied: list[tuple[RunTally, LeafSums | ScatteredSums]]) -> Estimate:
     """Common nodes, and the free energies; every sample counts as independent."""
     run_count = len(tallied)
     assembly = assemble([tally for tally, _ in tallied], [leaves for _, leaves in tallied])

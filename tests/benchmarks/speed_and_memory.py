@@ -18,7 +18,7 @@ from numpy.typing import NDArray
 from side_by_side import medians, milliseconds, say_rows, say_target, table_rows
 
 from reweight.estimate import Estimate
-from reweight.tally.leaves import Nodes
+from reweight.tally.nodes import Nodes
 
 RUNS, ROWS = 32, 1_000_000
 WORKERS = 2
@@ -66,6 +66,7 @@ def extra_megabytes(run_count: int, rows: int) -> float:
         target=report_extra_memory, args=(sending, run_count, rows)
     )
     process.start()
+    sending.close()  # else a process that died would be waited for without end
     extra = float(receiving.recv())
     process.join()
     return extra

@@ -3,9 +3,9 @@
     python tests/calibration/reach.py [EXPERIMENTS]
 
 Every experiment draws correlated runs from exact distributions, finds the reach of the mean energy and of the heat
-capacity, asks both at the two ends of their reach (the last supported temperature), and half and one and a half
-inverse standard deviations of the energy beyond, and notes whether the 95 % interval held the exact answer.  None of these systems was
-used when the rule was chosen.  Writes reach.csv beside this script; a table goes to the screen.
+capacity, and asks both at the two ends of their reach (the last supported temperature) and half and one and a half
+inverse standard deviations of the energy beyond.  Noted is whether the 95 % interval held the exact answer.  None of
+these systems was used when the rule was chosen.  Writes reach.csv beside this script; a table goes to the screen.
 """
 
 from __future__ import annotations
@@ -18,12 +18,12 @@ from dataclasses import dataclass
 from pathlib import Path
 
 import numpy as np
-
-import reweight as rw
-from reweight.answers.evaluate import evaluate
 from reweight.datasets.exact import canonical, lattice_log_degeneracies
 from reweight.datasets.exact_models import ladder_levels, ring_levels
 from reweight.datasets.sampling import draw_gamma, draw_gaussian, draw_levels
+
+import reweight as rw
+from reweight.answers.evaluate import evaluate
 from reweight.uncertainty.intervals import half_width
 
 SEED = 20261201
@@ -43,7 +43,9 @@ class System:
     exact: Callable[[float], tuple[float, float]]
 
 
-def levels_system(name: str, levels: tuple[np.ndarray, np.ndarray], temperatures: tuple[float, ...]) -> System:
+def levels_system(
+    name: str, levels: tuple[np.ndarray, np.ndarray], temperatures: tuple[float, ...]
+) -> System:
     def exact(temperature: float) -> tuple[float, float]:
         answer = canonical(*levels, [temperature])
         return float(answer.mean_energy[0]), float(answer.heat_capacity[0])
@@ -72,7 +74,9 @@ SYSTEMS = (
 )
 
 
-def experiment(system: System, independent: int, rng: np.random.Generator) -> list[tuple[str, str, str, bool]]:
+def experiment(
+    system: System, independent: int, rng: np.random.Generator
+) -> list[tuple[str, str, str, bool]]:
     """One set of runs; whether each interval held the truth, by quantity, end and side of the border."""
     runs = {str(t): system.draw(t, independent * INEFFICIENCY, rng) for t in system.temperatures}
     combined = rw.combine(runs, temperatures=system.temperatures, discard=0)
@@ -111,14 +115,25 @@ def main(experiments: int) -> None:
             for (name, end, side), held in sorted(counts.items()):
                 share = 100 * float(np.mean(held))
                 error = float(np.sqrt(share * (100 - share) / len(held)))
-                rows.append([system.name, independent, name, end, side, len(held), f"{share:.1f}", f"{error:.1f}"])
+                rows.append(
+                    [system.name, independent, name, end, side, len(held), f"{share:.1f}", f"{error:.1f}"]
+                )
                 print(*rows[-1], sep="\t", flush=True)
             print(f"  {time.perf_counter() - started:.0f} s", flush=True)
     target = Path(__file__).with_suffix(".csv")
     with target.open("w", newline="") as stream:
         writer = csv.writer(stream, lineterminator="\n")
         writer.writerow(
-            ["system", "independent_samples_a_run", "quantity", "end", "side", "intervals", "covered_percent", "error"]
+            [
+                "system",
+                "independent_samples_a_run",
+                "quantity",
+                "end",
+                "side",
+                "intervals",
+                "covered_percent",
+                "error",
+            ]
         )
         writer.writerows(rows)
     for name in QUANTITIES:

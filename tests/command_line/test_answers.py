@@ -8,9 +8,9 @@ import re
 
 import numpy as np
 import pytest
+from reweight.cli.application import main
 
 import reweight as rw
-from reweight.cli.application import main
 
 GAS_CONSTANT = 8.31446261815324e-3  # kJ/(mol K), exact by definition (SI 2019)
 SHAPE = 30.0  # of the Gamma-distributed energies in the study: C = SHAPE R, E = SHAPE R T
@@ -41,7 +41,10 @@ def test_a_curve_agrees_with_the_exact_answer_within_its_error(combined, reweigh
     exact = SHAPE * GAS_CONSTANT
     for place, temperature in enumerate(answer["temperature"]):
         assert abs(answer["heat_capacity"][place] - exact) < 4 * answer["heat_capacity_standard_error"][place]
-        assert abs(answer["mean_energy"][place] - exact * temperature) < 4 * answer["mean_energy_standard_error"][place]
+        assert (
+            abs(answer["mean_energy"][place] - exact * temperature)
+            < 4 * answer["mean_energy_standard_error"][place]
+        )
         assert answer["heat_capacity_standard_error"][place] < 0.05 * exact
     assert "at 310, 320 K" in outcome.stderr
 
@@ -69,9 +72,13 @@ def test_answers_out_of_reach_are_null_counted_and_marked(combined, reweight):
 
 def test_answers_per_count_and_in_another_unit_are_scaled(combined, reweight):
     total = json.loads(reweight("curve", combined, "--at", "310", "--json").stdout)
-    per = json.loads(reweight("curve", combined, "--at", "310", "--per-count", "--energy-unit", "eV", "--json").stdout)
+    per = json.loads(
+        reweight("curve", combined, "--at", "310", "--per-count", "--energy-unit", "eV", "--json").stdout
+    )
 
-    kilojoule_per_mole_in_ev = 8.617333262145179e-5 / GAS_CONSTANT  # ratio of the exact Boltzmann constants (SI 2019)
+    kilojoule_per_mole_in_ev = (
+        8.617333262145179e-5 / GAS_CONSTANT
+    )  # ratio of the exact Boltzmann constants (SI 2019)
     expected = np.array(total["mean_energy_interval"]) / 20 * kilojoule_per_mole_in_ev
     np.testing.assert_allclose(per["mean_energy_interval"], expected, rtol=1e-9)
     assert per["units"]["heat_capacity"] == "eV K-1"
@@ -90,7 +97,11 @@ def test_a_table_for_machines_holds_all_digits(combined, tmp_path, reweight):
 
     with target.open(newline="") as stream:
         rows = list(csv.reader(stream))
-    assert rows[0][:3] == ["temperature [K]", "mean_energy [kJ mol-1]", "mean_energy_standard_error [kJ mol-1]"]
+    assert rows[0][:3] == [
+        "temperature [K]",
+        "mean_energy [kJ mol-1]",
+        "mean_energy_standard_error [kJ mol-1]",
+    ]
     assert [float(row[1]) for row in rows[1:]] == answer["mean_energy"]
 
 
@@ -125,14 +136,18 @@ def test_a_weak_link_ends_with_status_3_and_is_remembered(study, reweight):
 
 def test_a_run_too_short_for_its_correlation_ends_with_status_3(study, reweight):
     rng = np.random.default_rng(9)
-    steps = np.repeat(rng.gamma(SHAPE, GAS_CONSTANT * 300.0, 20), 200)  # twenty values, each held for 200 rows
+    steps = np.repeat(
+        rng.gamma(SHAPE, GAS_CONSTANT * 300.0, 20), 200
+    )  # twenty values, each held for 200 rows
     rows = np.column_stack([np.arange(4000), steps])
     np.savetxt(study.parent / "cold.dat", rows, fmt=["%d", "%.8f"], header="step potential")
 
     outcome = reweight("combine", study, "--json")
 
     assert outcome.status == 3
-    findings = {each["offender"]: each for each in json.loads(outcome.stdout)["findings"] if each["check"] == "length"}
+    findings = {
+        each["offender"]: each for each in json.loads(outcome.stdout)["findings"] if each["check"] == "length"
+    }
     assert findings["cold"]["verdict"] == "unsound"
     assert findings["hot"]["verdict"] == "sound"
 

@@ -70,7 +70,10 @@ STUDY_FAULTS: dict[str, tuple[Break, str]] = {
     "newer schema": (_replace("study.toml", "schema = 1", "schema = 2"), r"schema"),
     "negative temperature": (_replace("study.toml", "300.0", "-300.0"), r"run\[1\].*temperature.*-300"),
     "zero temperature": (_replace("study.toml", "300.0", "0.0"), r"run\[1\].*temperature"),
-    "two labels": (_replace("study.toml", "temperature = 300.0", "temperature = 300.0\nbeta = 0.4"), r"run\[1\].*beta"),
+    "two labels": (
+        _replace("study.toml", "temperature = 300.0", "temperature = 300.0\nbeta = 0.4"),
+        r"run\[1\].*beta",
+    ),
     "no label": (_replace("study.toml", "temperature = 300.0", ""), r"run\[1\].*temperature"),
     "same name twice": (_replace("study.toml", 'name = "hot"', 'name = "cold"'), r"run.*name.*cold"),
     "feature of a later version": (
@@ -82,7 +85,10 @@ STUDY_FAULTS: dict[str, tuple[Break, str]] = {
         _replace("study.toml", 'name = "hot"', 'name = "hot"\nuse = false'),
         r"run\[2\].*reason",
     ),
-    "discards everything": (_replace("study.toml", 'name = "hot"', 'name = "hot"\ndiscard = 4000'), r"discard.*4000"),
+    "discards everything": (
+        _replace("study.toml", 'name = "hot"', 'name = "hot"\ndiscard = 4000'),
+        r"discard.*4000",
+    ),
 }
 
 FILE_FAULTS: dict[str, tuple[Break, str]] = {
@@ -146,7 +152,10 @@ def test_a_question_that_cannot_be_answered_is_refused(name, combined, reweight)
     before = sorted(combined.parent.iterdir())
 
     outcome = reweight(
-        *(str(each).replace("FILE", str(combined)).replace("FOLDER", str(combined.parent)) for each in arguments)
+        *(
+            str(each).replace("FILE", str(combined)).replace("FOLDER", str(combined.parent))
+            for each in arguments
+        )
     )
 
     assert outcome.status == 2, outcome.stderr

@@ -39,7 +39,7 @@ def test_show_says_what_a_file_is_and_what_may_be_asked_of_it(combined, reweight
     assert outcome.stdout.startswith("Twenty oscillators\n")
     for line in (
         r"energies in kJ/mol, temperatures in K",
-        r"count: 20 \(oscillator\)",
+        r"count: 20, per oscillator",
         r"2 runs, [\d,]+ samples after transients",
         r"^  300, 330 K$",
         r"energies kept as smooth weights on intervals of [\d.]+ kJ/mol",

@@ -16,9 +16,11 @@ from reweight.multistate import Solution, pairwise_start, solve
 from reweight.quantities.heat_capacity import HeatCapacity
 from reweight.quantities.moments import Moments
 from reweight.tally.assemble import assemble
-from reweight.tally.leaves import COUNT, LeafSums, Nodes, RunTally
+from reweight.tally.leaves import LeafSums
 from reweight.tally.levels import pour
+from reweight.tally.nodes import COUNT, Nodes
 from reweight.tally.panels import panel_width
+from reweight.tally.run_tally import RunTally
 
 Array = NDArray[np.float64]
 

@@ -205,3 +205,10 @@ def test_all_problems_are_listed_at_once():
         "run[1].files",
     ]
     assert error.key == "conditions.exchange"
+
+
+@pytest.mark.parametrize("hostile", ["two\\nlines", "a\\u202eb", "red \\u001b[31m"])
+def test_a_title_that_could_disturb_a_screen_is_refused(hostile):
+    text = f'schema = 1\ntitle = "{hostile}"\nenergy_unit = "eV"\n[[run]]\ntemperature = 300.0\nfiles = "a.dat"\n'
+    with pytest.raises(StudyError, match=r"title .*one line of printable text"):
+        parse_study(text, folder=".")

@@ -9,7 +9,9 @@ from hypothesis import strategies as st
 from naive import group_means, level_tally
 
 import reweight as rw
-from reweight.tally.leaves import BATCH, COUNT, Column, Nodes, RunTally, leaf_length, leaf_sums
+from reweight.tally.leaves import leaf_length, leaf_sums
+from reweight.tally.nodes import COUNT, Column, Nodes
+from reweight.tally.run_tally import BATCH, RunTally
 
 LEVELS = Nodes(1.0, discrete=True)
 

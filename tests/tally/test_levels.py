@@ -8,8 +8,9 @@ from hypothesis import given
 from hypothesis import strategies as st
 from naive import level_tally
 
-from reweight.tally.leaves import COUNT, Column, Nodes, leaf_sums
+from reweight.tally.leaves import leaf_sums
 from reweight.tally.levels import MOST_LEVELS, SIGHTINGS, are_levels, find_spacing, pour
+from reweight.tally.nodes import COUNT, Column, Nodes
 from reweight.tally.panels import node_energies, node_matrix
 
 LATTICE = -2048 + 4 * np.arange(0, 300)  # energies of a 32 x 32 lattice

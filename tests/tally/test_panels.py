@@ -12,7 +12,8 @@ from naive import panel_tally
 from numpy.polynomial import Polynomial
 
 from reweight.errors import InputError
-from reweight.tally.leaves import COUNT, Column, Nodes, leaf_sums
+from reweight.tally.leaves import leaf_sums
+from reweight.tally.nodes import COUNT, Column, Nodes
 from reweight.tally.panels import (
     ORDER,
     chebyshev_values,

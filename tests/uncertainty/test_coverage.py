@@ -27,7 +27,7 @@ from reweight.answers.evaluate import evaluate
 from reweight.quantities.energy import MeanEnergy
 from reweight.quantities.heat_capacity import HeatCapacity
 from reweight.quantities.moments import Moments
-from reweight.tally.leaves import COUNT
+from reweight.tally.nodes import COUNT
 from reweight.uncertainty.influence import influence
 from reweight.uncertainty.intervals import half_width
 

@@ -23,7 +23,7 @@ from reweight.multistate import solve
 from reweight.quantities.catalogue import available
 from reweight.quantities.moments import LOG_PARTITION, Moments
 from reweight.quantities.quantity import Quantity
-from reweight.tally.leaves import COUNT
+from reweight.tally.nodes import COUNT
 from reweight.uncertainty.influence import block_sums, chain, influence
 from reweight.uncertainty.window import variance
 
@@ -74,10 +74,11 @@ def with_added_weight(
     """
     estimate, weighting = combined.estimate, inefficiencies(combined)
     parts = list(estimate.assembly.runs)
-    weights, rows = parts[run].weights.copy(), parts[run].rows.astype(float)
-    weights[column, 3, node] += weight * weighting[run]
+    weights = [each.copy() for each in parts[run].weights]
+    rows = parts[run].rows.astype(float)
+    weights[column][3, node] += weight * weighting[run]
     rows[3] += weight * weighting[run] * counted
-    parts[run] = dataclasses.replace(parts[run], weights=weights, rows=rows)
+    parts[run] = dataclasses.replace(parts[run], weights=tuple(weights), rows=rows)
     changed = Estimate.solved(
         dataclasses.replace(estimate.assembly, runs=tuple(parts)),
         estimate.columns,
