@@ -43,8 +43,10 @@ class RunLeaves:
     ----------
     index : numpy.ndarray, shape (q,)
         Places of the run's nodes among all nodes.
-    weights : tuple of arrays, length C, shape (B, q)
-        In samples: shared with the assembly, since a copy would be as large as everything else together.
+    place : numpy.ndarray, shape (M,)
+        Places of its keys among all keys.
+    sums : tuple of arrays, length C, shape (B, q)
+        Sums on keys, in samples: shared with the assembly, since a copy would be as large as everything else together.
     weighting : float
         Samples per unit of weight.
     counts : numpy.ndarray, shape (B,)
@@ -54,7 +56,8 @@ class RunLeaves:
     """
 
     index: NDArray[np.int64]
-    weights: tuple[Matrix, ...]
+    place: NDArray[np.int64]
+    sums: tuple[Matrix, ...]
     weighting: float
     counts: Array
     total: Array
@@ -121,13 +124,15 @@ class Estimate:
         shares = weighting / inefficiencies
         runs = []
         for i, run in enumerate(assembly.runs):
-            kept = tuple(column[first_leaves[i] :] for column in run.weights)
+            kept = tuple(column[first_leaves[i] :] for column in run.sums)
             counts = run.rows[first_leaves[i] :] / weighting[i]
-            total = np.array([np.asarray(column.sum(axis=0)).ravel() for column in kept]) / weighting[i]
-            runs.append(RunLeaves(run.index, kept, float(weighting[i]), counts, total))
-            weights[:, run.index] += total
-            independent[run.index] += total[0] * shares[i]
-            per_run[i, run.index] = total[0]
+            summed = np.array([np.asarray(column.sum(axis=0)).ravel() for column in kept])
+            total = assembly.node_weights(summed) / weighting[i]
+            index = assembly.nodes_at(run.place)
+            runs.append(RunLeaves(index, run.place, kept, float(weighting[i]), counts, total))
+            weights[:, index] += total
+            independent[index] += total[0] * shares[i]
+            per_run[i, index] = total[0]
         counts = np.array([run.counts.sum() for run in runs])
         solution = solver(per_run, counts, beta, assembly.energies)
         return cls(

@@ -46,6 +46,7 @@ Array = NDArray[np.float64]
 LARGEST_STEP = 50.0
 DECREMENT = 1e-6
 MOST_STEPS = 100
+START = 1e-2  # how well starting values are solved for; Newton does the rest
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -105,7 +106,7 @@ def pairwise_start(weights: Array, counts: Array, beta: Array, energies: Array) 
                 raise ConvergenceError(
                     "two neighbouring runs could not be joined: their energies exceed double precision"
                 )
-        free[b] = free[a] + brentq(excess, middle - reach, middle + reach, xtol=1e-10)
+        free[b] = free[a] + brentq(excess, middle - reach, middle + reach, xtol=START)
     return free
 
 

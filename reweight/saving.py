@@ -109,7 +109,7 @@ def _write(file: Any, combined: DensityOfStates) -> None:
         _variable(group, "kept_rows", ("row", "column"), tally.tail)
         if tally.leaves is not None and tally.thinned is not None:
             _variable(group, "keys", ("key",), tally.leaves.keys)
-            _variable(group, "sums", ("tallied", "leaf", "key", "order"), tally.leaves.sums)
+            _variable(group, "sums", ("tallied", "leaf", "order", "key"), tally.leaves.sums)
             _variable(group, "leaf_rows", ("leaf",), tally.leaves.rows)
             group.thinned_group = np.int64(tally.thinned.group)
             _variable(group, "thinned_origin", ("column",), tally.thinned.origin)

@@ -37,7 +37,7 @@ def combine(
     weighting: str = "independent",
     discard: int | str = "auto",
     observables: Mapping[str, Mapping[str, Any]] | None = None,
-    workers: int = WORKERS,
+    workers: int | None = None,
     progress: Progress | None = None,
 ) -> DensityOfStates:
     """Combine canonical runs into one estimate of the density of states.
@@ -65,8 +65,9 @@ def combine(
     observables : mapping, optional
         What the columns beside the energy are: name to ``unit``, ``is``, ``moments``, ``absolute`` as in a study file.
         By default every further column is taken as a plain observable.
-    workers : int
-        Runs read at the same time.
+    workers : int, optional
+        Runs read at the same time; by default two from files, and one from memory, where more would only wait for one
+        another.  The result does not depend on it.
     progress : callable, optional
         Called with a run's name and the number of rows just tallied.
 
@@ -97,7 +98,7 @@ def combine(
                 "progress may be given beside it. Change the study."
             )
         study = runs if isinstance(runs, Study) else load_study(runs)
-        return combine_study(study, workers=workers, progress=progress)
+        return combine_study(study, workers=workers or WORKERS, progress=progress)
     tree = as_tree(
         runs,
         temperatures=temperatures,
@@ -122,7 +123,7 @@ def combine(
         tree_sources(tree, beta, names, _discarded(discard)),
         description,
         provenance={"version": VERSION},
-        workers=workers,
+        workers=workers or 1,
         progress=progress,
     )
 

@@ -150,7 +150,7 @@ def block_variance(blocks: Array) -> float:
 
 
 def panel_tally(energies: Array, width: float, length: int, values: Array | None = None) -> dict[int, Array]:
-    """Chebyshev sums of every panel and leaf, one sample at a time: panel number to (leaves, 8)."""
+    """Power sums of every panel and leaf, one sample at a time: panel number to (leaves, 8)."""
     leaves = -(-energies.size // length)
     sums: dict[int, Array] = {}
     for row, energy in enumerate(energies):
@@ -159,7 +159,7 @@ def panel_tally(energies: Array, width: float, length: int, values: Array | None
         weight = 1.0 if values is None else values[row]
         panel_sums = sums.setdefault(panel, np.zeros((leaves, 8)))
         for j in range(8):
-            panel_sums[row // length, j] += weight * math.cos(j * math.acos(local))
+            panel_sums[row // length, j] += weight * local**j
     return sums
 
 

@@ -17,28 +17,28 @@ from reweight.tally.levels import are_levels, pour
 from reweight.tally.panels import ORDER, node_energies, node_matrix
 from reweight.tally.run_tally import RunTally
 
-__all__ = ["Assembly", "Matrix", "RunWeights", "assemble"]
+__all__ = ["Assembly", "Matrix", "RunSums", "assemble"]
 
 Matrix = NDArray[np.float64] | csr_array
 
 
 @dataclass(frozen=True, slots=True)
-class RunWeights:
-    """Samples of one run as weights on nodes, leaf by leaf.
+class RunSums:
+    """Samples of one run as power sums on panels (or counts on levels), leaf by leaf.
 
     Attributes
     ----------
-    index : numpy.ndarray, shape (q,)
-        Places of the run's nodes among all nodes.
-    weights : tuple of arrays, length C, shape (B, q)
-        Plain counts first, then the counts weighted with each observable moment; in samples.  Sparse where a run
-        visits few of its panels in each leaf.
+    place : numpy.ndarray, shape (M,)
+        Places of the run's keys among all keys.
+    sums : tuple of arrays, length C, shape (B, q)
+        Plain counts first, then the counts weighted with each observable moment; in samples; all keys for the first
+        power, then for the next.  Sparse where a run visits few of its panels in each leaf.
     rows : numpy.ndarray, shape (B,)
         Rows in each leaf.
     """
 
-    index: NDArray[np.int64]
-    weights: tuple[Matrix, ...]
+    place: NDArray[np.int64]
+    sums: tuple[Matrix, ...]
     rows: NDArray[np.int64]
 
 
@@ -59,7 +59,9 @@ class Assembly:
         Of the panels.
     discrete : bool
         Keys are levels.
-    runs : tuple of RunWeights, length K
+    runs : tuple of RunSums, length K
+    matrix : numpy.ndarray, shape (order, order)
+        From the sums on a key to the weights on its nodes.
     """
 
     keys: NDArray[np.int64] | NDArray[np.float64]
@@ -68,7 +70,21 @@ class Assembly:
     order: int
     width: float
     discrete: bool
-    runs: tuple[RunWeights, ...]
+    runs: tuple[RunSums, ...]
+    matrix: NDArray[np.float64]
+
+    def nodes_at(self, place: NDArray[np.int64]) -> NDArray[np.int64]:
+        """Places of the nodes of some keys among all nodes, key by key, shape (q,)."""
+        return np.asarray((place[:, None] * self.order + np.arange(self.order)).ravel())
+
+    def node_weights(self, sums: NDArray[np.float64]) -> NDArray[np.float64]:
+        """Weights on nodes, key by key, from sums in the order of a run's matrix, both of shape (C, q)."""
+        by_key = sums.reshape(sums.shape[0], self.order, -1).swapaxes(1, 2)
+        return np.asarray((by_key @ self.matrix).reshape(sums.shape))
+
+    def on_sums(self, values: NDArray[np.float64]) -> NDArray[np.float64]:
+        """Factors of sums, shape (order, M, T), from factors of node weights, shape (Q, T)."""
+        return np.asarray(np.swapaxes(self.matrix @ values.reshape(-1, self.order, values.shape[1]), 0, 1))
 
 
 def assemble(tallies: Sequence[RunTally], leaves: Sequence[LeafSums | ScatteredSums]) -> Assembly:
@@ -92,9 +108,7 @@ def assemble(tallies: Sequence[RunTally], leaves: Sequence[LeafSums | ScatteredS
         energies = node_energies(keys.astype(np.int64), width, int(middle))
     runs = []
     for part in leaves:
-        place = np.searchsorted(keys, part.keys)
-        index = (place[:, None] * order + np.arange(order)).ravel()
-        runs.append(RunWeights(index=index, weights=_node_weights(part, order, matrix), rows=part.rows))
+        runs.append(RunSums(place=np.searchsorted(keys, part.keys), sums=_by_leaf(part), rows=part.rows))
     return Assembly(
         keys=keys,
         energies=np.asarray(energies, float),
@@ -103,19 +117,19 @@ def assemble(tallies: Sequence[RunTally], leaves: Sequence[LeafSums | ScatteredS
         width=width,
         discrete=discrete,
         runs=tuple(runs),
+        matrix=matrix,
     )
 
 
-def _node_weights(
-    part: LeafSums | ScatteredSums, order: int, matrix: NDArray[np.float64]
-) -> tuple[Matrix, ...]:
-    weights = part.sums @ matrix
-    shape = (part.rows.size, part.keys.size * order)
+def _by_leaf(part: LeafSums | ScatteredSums) -> tuple[Matrix, ...]:
+    """Sums as one matrix (B, q) a tallied column."""
     if isinstance(part, LeafSums):
-        return tuple(column.reshape(shape) for column in weights)
+        return tuple(column.reshape(part.rows.size, -1) for column in part.sums)
+    order, size = part.sums.shape[2], part.keys.size
     leaf = np.repeat(part.leaf, order)
-    node = (part.place[:, None] * order + np.arange(order)).ravel()
-    return tuple(csr_array((column.ravel(), (leaf, node)), shape=shape) for column in weights)
+    place = (part.place[:, None] + size * np.arange(order)).ravel()
+    shape = (part.rows.size, size * order)
+    return tuple(csr_array((column.ravel(), (leaf, place)), shape=shape) for column in part.sums)
 
 
 def _poured(part: LeafSums | ScatteredSums, width: float) -> LeafSums:

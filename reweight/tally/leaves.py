@@ -14,6 +14,7 @@ M keys (panels or levels), p order (nodes a panel; 1 for levels), P pairs of a l
 
 from __future__ import annotations
 
+import itertools
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from typing import Any
@@ -22,22 +23,22 @@ import numpy as np
 from numpy.typing import NDArray
 
 from reweight.tally.nodes import Column, Nodes
-from reweight.tally.panels import chebyshev_values, panel_indices
+from reweight.tally.panels import check_magnitude, panel_indices, powers
 from reweight.tally.tree import doublings, pairwise
 
 __all__ = [
     "LeafSums",
     "ScatteredSums",
+    "at_most_keys",
     "join_leaves",
     "leaf_length",
     "leaf_sums",
-    "occupied_keys",
     "scattered_sums",
 ]
 
 MOST_LEAVES = 128
 BASE = 1024
-STRIDE = 8 * BASE  # rows handled at a time: what belongs to them fits the second-level cache
+STRIDE = 16 * BASE  # rows handled at a time: what belongs to them fits the second-level cache
 
 # Panels numbered without gaps from the lowest to the highest; beyond so many, that could cost any amount of memory.
 CONTIGUOUS = 4096
@@ -53,8 +54,8 @@ class LeafSums:
     ----------
     keys : numpy.ndarray, shape (M,)
         Panel numbers (int64) or levels (float64), ascending.
-    sums : numpy.ndarray, shape (C, B, M, p)
-        Chebyshev sums (panels) or counts (levels), weighted with each tallied column.
+    sums : numpy.ndarray, shape (C, B, p, M)
+        Power sums (panels) or counts (levels), weighted with each tallied column.
     rows : numpy.ndarray, shape (B,)
         Rows in each leaf; only the last may be short.
     """
@@ -75,7 +76,7 @@ class ScatteredSums:
     leaf, place : numpy.ndarray, shape (P,)
         Leaf of each entry, and the place of its panel among the keys.
     sums : numpy.ndarray, shape (C, P, p)
-        Chebyshev sums weighted with each tallied column.
+        Power sums weighted with each tallied column.
     rows : numpy.ndarray, shape (B,)
         Rows in each leaf; only the last may be short.
     """
@@ -95,13 +96,20 @@ def leaf_length(rows: int) -> int:
     return length
 
 
+def _span(energies: NDArray[np.float64], width: float) -> tuple[int, int]:
+    """Lowest and highest panel visited."""
+    ends = np.array([energies.min(), energies.max()])
+    check_magnitude(ends[0], ends[1], width)
+    lowest, highest = np.floor(ends / width)
+    return int(lowest), int(highest)
+
+
 def _placed(energies: NDArray[np.float64], nodes: Nodes) -> tuple[NDArray[Any], Locate]:
     """Keys that may be present, and a function from a slice of the rows to their places and local coordinates."""
     if nodes.discrete:
         keys = np.unique(energies)
         return keys, lambda here: (np.searchsorted(keys, energies[here]), energies[here])
-    ends, _ = panel_indices(np.array([energies.min(), energies.max()]), nodes.width)
-    lowest, highest = int(ends[0]), int(ends[1])
+    lowest, highest = _span(energies, nodes.width)
     if highest - lowest < CONTIGUOUS:
 
         def locate(here: slice) -> tuple[NDArray[np.int64], NDArray[np.float64]]:
@@ -148,8 +156,8 @@ def leaf_sums(
     unit = min(length, STRIDE)
     longest = min(count, STRIDE)
     buffer = np.empty((order, longest))
-    offsets = np.arange(longest) // base * size
-    sums = np.empty((len(columns), leaf_count * (length // unit), size, order))
+    offsets = np.repeat(np.arange(-(-longest // base)) * size, base)[:longest]
+    sums = np.empty((len(columns), leaf_count * (length // unit), order, size))
     sums[:, -(-count // unit) :] = 0
     for start in range(0, count, STRIDE):
         here = slice(start, min(start + STRIDE, count))
@@ -157,24 +165,38 @@ def leaf_sums(
         blocks = STRIDE // base if length > base else -(-number // base)
         place, coordinate = locate(here)
         bins = place + offsets[:number]
-        values = chebyshev_values(coordinate, order, out=buffer[:, :number])
-        total = np.empty((len(columns), order, blocks * size))
+        values = powers(coordinate, order, out=buffer[:, :number])
+        filled = sums[:, start // unit : -(-here.stop // unit)]
+        # Blocks that are leaves by themselves are summed where they belong.
+        direct = unit == base
+        total = filled if direct else np.empty((len(columns), blocks, order, size))
         for c, weight in enumerate(weights):
             for j in range(order):
                 factor = values[j] if j else None
                 if weight is not None:
                     factor = weight[here] if factor is None else weight[here] * factor
-                total[c, j] = np.bincount(bins, factor, minlength=blocks * size)
-        folded = pairwise(total.reshape(len(columns), order, blocks, size), 2, doublings(unit, base))
-        filled = sums[:, start // unit : -(-here.stop // unit)]
-        filled[...] = folded[:, :, : filled.shape[1]].transpose(0, 2, 3, 1)
+                total[c, :, j] = np.bincount(bins, factor, minlength=blocks * size).reshape(blocks, size)
+        if not direct:
+            filled[...] = pairwise(total, 1, doublings(unit, base))[:, : filled.shape[1]]
     sums = pairwise(sums, 1, doublings(length, unit))
-    occupied = np.flatnonzero(sums[0, :, :, 0].any(axis=0))
+    occupied = np.flatnonzero(sums[0, :, 0].any(axis=0))
     return LeafSums(
         keys=keys[occupied],
-        sums=sums if occupied.size == size else sums.take(occupied, axis=2),
+        sums=_kept(sums, occupied),
         rows=_leaf_rows(count, length),
     )
+
+
+def _kept(sums: NDArray[np.float64], occupied: NDArray[np.int64]) -> NDArray[np.float64]:
+    """Sums of the occupied keys only, copied stretch by stretch: many times faster than key by key."""
+    if occupied.size == sums.shape[-1]:
+        return sums
+    kept = np.empty((*sums.shape[:-1], occupied.size))
+    ends = np.flatnonzero(np.diff(occupied) > 1) + 1
+    for start, stop in itertools.pairwise([0, *ends, occupied.size]):
+        first = occupied[start]
+        kept[..., start:stop] = sums[..., first : first + stop - start]
+    return kept
 
 
 def _leaf_rows(count: int, length: int) -> NDArray[np.int64]:
@@ -182,15 +204,14 @@ def _leaf_rows(count: int, length: int) -> NDArray[np.int64]:
     return np.minimum(length, count - np.arange(0, count, length))
 
 
-def occupied_keys(energies: NDArray[np.float64], nodes: Nodes) -> int:
-    """Count the panels or levels visited."""
+def at_most_keys(energies: NDArray[np.float64], nodes: Nodes, enough: int) -> int:
+    """Panels or levels visited; or any larger number up to ``enough``, where counting would only cost time."""
     if nodes.discrete:
         return int(np.unique(energies).size)
-    index, _ = panel_indices(energies, nodes.width)
-    index -= index.min()
-    if index.max() < CONTIGUOUS:
-        return int(np.count_nonzero(np.bincount(index.astype(np.int64))))
-    return int(np.unique(index).size)
+    lowest, highest = _span(energies, nodes.width)
+    if highest - lowest < enough:
+        return highest - lowest + 1
+    return int(np.unique(np.floor(energies / nodes.width)).size)
 
 
 def scattered_sums(
@@ -201,11 +222,13 @@ def scattered_sums(
     observables: Sequence[str],
 ) -> ScatteredSums:
     """Tally rows in leaves as :func:`leaf_sums` does, without the gaps; sums are taken in row order."""
-    index, coordinate = panel_indices(np.ascontiguousarray(rows[:, 0]), nodes.width)
+    energies = np.ascontiguousarray(rows[:, 0])
+    check_magnitude(float(energies.min()), float(energies.max()), nodes.width)
+    index, coordinate = panel_indices(energies, nodes.width)
     keys, place = np.unique(index.astype(np.int64), return_inverse=True)
     leaf = np.arange(rows.shape[0]) // length
     pairs, pair = np.unique(leaf * keys.size + place, return_inverse=True)
-    values = chebyshev_values(coordinate, nodes.order)
+    values = powers(coordinate, nodes.order)
     sums = np.empty((len(columns), pairs.size, nodes.order))
     for c, column in enumerate(columns):
         weighted = values if c == 0 else values * column_values(rows, column, observables)
@@ -226,14 +249,14 @@ def join_leaves(parts: Sequence[LeafSums]) -> LeafSums:
         return parts[0]
     keys = np.unique(np.concatenate([part.keys for part in parts]))
     rows = np.concatenate([part.rows for part in parts])
-    columns, _, _, order = parts[0].sums.shape
-    sums = np.zeros((columns, rows.size, keys.size, order))
+    columns, _, order, _ = parts[0].sums.shape
+    sums = np.zeros((columns, rows.size, order, keys.size))
     start = 0
     for part in parts:
         here = sums[:, start : start + part.rows.size]
         if part.keys.size == keys.size:  # the usual case, and many times faster than placing them one by one
             here[...] = part.sums
         else:
-            here[:, :, np.searchsorted(keys, part.keys)] = part.sums
+            here[..., np.searchsorted(keys, part.keys)] = part.sums
         start += part.rows.size
     return LeafSums(keys=keys, sums=sums, rows=rows)

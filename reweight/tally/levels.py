@@ -13,7 +13,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from reweight.tally.panels import ORDER, chebyshev_values, panel_indices
+from reweight.tally.panels import ORDER, check_magnitude, panel_indices, powers
 
 __all__ = ["MOST_LEVELS", "SIGHTINGS", "Spacing", "are_levels", "find_spacing", "pour"]
 
@@ -102,12 +102,12 @@ def _roundest(value: float, doubt: float) -> float:
 def pour(
     levels: NDArray[np.float64], sums: NDArray[np.float64], width: float
 ) -> tuple[NDArray[np.int64], NDArray[np.float64]]:
-    """Counts on levels as Chebyshev sums on panels.
+    """Counts on levels as power sums on panels.
 
     Parameters
     ----------
     levels : numpy.ndarray, shape (M,)
-    sums : numpy.ndarray, shape (C, B, M, 1)
+    sums : numpy.ndarray, shape (C, B, 1, M)
         Per tallied column and leaf.
     width : float
         Of the panels.
@@ -115,12 +115,13 @@ def pour(
     Returns
     -------
     indices : numpy.ndarray, shape (P,)
-    sums : numpy.ndarray, shape (C, B, P, ORDER)
+    sums : numpy.ndarray, shape (C, B, ORDER, P)
     """
+    check_magnitude(float(levels.min()), float(levels.max()), width)
     index, coordinate = panel_indices(levels, width)
     indices, place = np.unique(index.astype(np.int64), return_inverse=True)
-    values = chebyshev_values(coordinate)
-    poured = np.zeros((*sums.shape[:2], indices.size, ORDER))
+    values = powers(coordinate)
+    poured = np.zeros((*sums.shape[:2], ORDER, indices.size))
     for level in range(levels.size):
-        poured[:, :, place[level], :] += sums[:, :, level, :] * values[:, level]
+        poured[..., place[level]] += sums[..., level] * values[:, level]
     return indices, poured

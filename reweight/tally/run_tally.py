@@ -17,10 +17,10 @@ from reweight.tally.leaves import (
     MOST_LEAVES,
     LeafSums,
     ScatteredSums,
+    at_most_keys,
     join_leaves,
     leaf_length,
     leaf_sums,
-    occupied_keys,
     scattered_sums,
 )
 from reweight.tally.levels import are_levels, pour
@@ -120,7 +120,7 @@ class RunTally:
 
     def _absorb(self, rows: NDArray[np.float64]) -> int:
         """Turn one batch into leaves; return how many rows were used (none if they are better kept)."""
-        if not self._parts and self._numbers(rows, 64) > rows.size:
+        if not self._parts and not self._fits(rows, 64, rows.size):
             self._batch *= 2
             return 0
         length = int(self._parts[0].rows[0]) if self._parts else self._batch // 64
@@ -145,9 +145,10 @@ class RunTally:
             self._leave_levels()
         return int(rows.shape[0])
 
-    def _numbers(self, rows: NDArray[np.float64], leaves: int) -> int:
-        """Count the numbers that so many leaves without gaps take."""
-        return leaves * len(self.columns) * self.nodes.order * occupied_keys(rows[:, 0], self.nodes)
+    def _fits(self, rows: NDArray[np.float64], leaves: int, most: int) -> bool:
+        """Whether so many leaves without gaps take at most so many numbers."""
+        numbers_a_key = leaves * len(self.columns) * self.nodes.order
+        return at_most_keys(rows[:, 0], self.nodes, most // numbers_a_key) * numbers_a_key <= most
 
     def _leave_levels(self) -> None:
         """Pour levels into panels if they are too many for the rows in the leaves."""
@@ -165,8 +166,8 @@ class RunTally:
         tail = self.tail
         if self.leaves is None:
             length = leaf_length(tail.shape[0])
-            numbers = self._numbers(tail, MOST_LEAVES)
-            wide = numbers > max(DENSEST * tail.size, FEW_NUMBERS) and not self.nodes.discrete
+            most = max(DENSEST * tail.size, FEW_NUMBERS)
+            wide = not self.nodes.discrete and not self._fits(tail, MOST_LEAVES, most)
             sums = scattered_sums if wide else leaf_sums
             leaves = sums(tail, length, self.nodes, self.columns, self.observables)
             return leaves, thin(tail, max(1, length // GROUPS_A_LEAF), tail[0])

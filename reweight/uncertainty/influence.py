@@ -75,10 +75,15 @@ def with_free_energies(estimate: Estimate, direct: dict[Column, Array]) -> dict[
 def block_sums(estimate: Estimate, influences: Influence) -> list[Array]:
     """Sums of the influence over each leaf of each run, centred; K arrays of shape (B, T)."""
     blocks = []
+    factors = {
+        estimate.columns.index(column): estimate.assembly.on_sums(phi)
+        for column, phi in influences.columns.items()
+    }
     for run in estimate.runs:
         total = None
-        for column, phi in influences.columns.items():
-            part = product(run.weights[estimate.columns.index(column)], phi[run.index])
+        for column, factor in factors.items():
+            here = factor[:, run.place].reshape(-1, factor.shape[2])
+            part = product(run.sums[column], here)
             total = part if total is None else total + part
         assert total is not None
         blocks.append(centred(total / run.weighting, run.counts))

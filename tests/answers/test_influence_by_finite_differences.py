@@ -34,7 +34,7 @@ def counting_a_leaf(combined: rw.DensityOfStates, run: int, leaf: int, times: fl
     factor = np.ones(changed.rows.size)
     factor[leaf] = times
     changed = dataclasses.replace(
-        changed, weights=changed.weights * factor[:, None], rows=changed.rows * factor
+        changed, sums=tuple(each * factor[:, None] for each in changed.sums), rows=changed.rows * factor
     )
     runs = (*assembly.runs[:run], changed, *assembly.runs[run + 1 :])
     estimate = estimate_of(combined.description, combined.runs, dataclasses.replace(assembly, runs=runs))

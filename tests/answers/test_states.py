@@ -21,7 +21,7 @@ import reweight as rw
 from reweight.density_of_states import DensityOfStates, Description
 from reweight.estimate import Estimate
 from reweight.multistate import pairwise_start, solve
-from reweight.tally.assemble import Assembly, RunWeights
+from reweight.tally.assemble import Assembly, RunSums
 from reweight.tally.nodes import COUNT
 
 LN_G = "log_density_of_states"
@@ -38,9 +38,9 @@ def fed_with_expected_counts(length: int, temperatures: list[float], samples: fl
         share = np.exp(logs - logs.max())
         counts = samples * share / share.sum() / LEAVES
         runs.append(
-            RunWeights(
-                index=np.arange(levels.size),
-                weights=np.tile(counts, (1, LEAVES, 1)),
+            RunSums(
+                place=np.arange(levels.size),
+                sums=(np.tile(counts, (LEAVES, 1)),),
                 rows=np.full(LEAVES, samples / LEAVES).astype(np.int64),
             )
         )
@@ -52,6 +52,7 @@ def fed_with_expected_counts(length: int, temperatures: list[float], samples: fl
         width=1.0,
         discrete=True,
         runs=tuple(runs),
+        matrix=np.ones((1, 1)),
     )
     ones = np.ones(beta.size)
     estimate = Estimate.solved(

@@ -76,7 +76,7 @@ def estimate_from_expected_counts(length: int, *, panels: bool) -> Estimate:
     width = panel_width(float(deviations.min()), float(np.abs(np.diff(1 / SIMULATED)).max()))
     tallies, leaves = [], []
     for run in probabilities:
-        expected = np.broadcast_to(ROWS_A_LEAF * run, (1, LEAVES, levels.size))[..., None]
+        expected = np.broadcast_to(ROWS_A_LEAF * run, (1, LEAVES, 1, levels.size))
         keys, sums = pour(levels, expected, width) if panels else (levels, np.array(expected))
         tally = RunTally(Nodes(width, discrete=not panels), (COUNT,), ())
         tally.row_count = LEAVES * ROWS_A_LEAF

@@ -59,7 +59,7 @@ def test_leaves_hold_the_counts_of_their_own_rows(rows: int) -> None:
 
     expected = level_tally(energies, leaf_length(rows))
     for place, level in enumerate(leaves.keys):
-        np.testing.assert_array_equal(leaves.sums[0, :, place, 0], expected[level])
+        np.testing.assert_array_equal(leaves.sums[0, :, 0, place], expected[level])
 
 
 @pytest.mark.parametrize("rows", [100, 5000, 70_001, 200_003])
@@ -108,7 +108,7 @@ def test_the_last_leaf_may_be_short(rows: int) -> None:
     energies = np.random.default_rng(rows).integers(0, 3, rows).astype(float)
     for length in (1024, 8192, 16_384):
         leaves = leaf_sums(energies[:, None], length, LEVELS, (COUNT,), [])
-        np.testing.assert_array_equal(leaves.sums[0, :, :, 0].sum(axis=1), leaves.rows)
+        np.testing.assert_array_equal(leaves.sums[0, :, 0].sum(axis=1), leaves.rows)
         assert leaves.rows.sum() == rows
 
 

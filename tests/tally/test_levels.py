@@ -39,7 +39,7 @@ def test_levels_are_counted_exactly(energies: list[int], doublings: int) -> None
         expected = level_tally(values, length, weights)
         assert list(leaves.keys) == sorted(expected)
         for place, level in enumerate(leaves.keys):
-            np.testing.assert_array_equal(leaves.sums[column, :, place, 0], expected[level])
+            np.testing.assert_array_equal(leaves.sums[column, :, 0, place], expected[level])
     assert leaves.rows.sum() == values.size
 
 
@@ -47,14 +47,14 @@ def test_levels_are_counted_exactly(energies: list[int], doublings: int) -> None
 def test_pouring_levels_into_panels_conserves_moments(degree: int) -> None:
     rng = np.random.default_rng(degree)
     levels = np.unique(rng.uniform(-50, 50, 200))
-    counts = rng.integers(0, 30, (2, 5, levels.size, 1)).astype(float)
+    counts = rng.integers(0, 30, (2, 5, 1, levels.size)).astype(float)
     width = 4.0
 
     keys, sums = pour(levels, counts, width)
     at_nodes = node_energies(keys, width, 0) / 50
-    weights = (sums @ node_matrix()).reshape(2, 5, -1)
+    weights = (np.swapaxes(sums, 2, 3) @ node_matrix()).reshape(2, 5, -1)
 
-    expected = counts[..., 0] @ (levels / 50) ** degree
+    expected = counts[:, :, 0] @ (levels / 50) ** degree
     np.testing.assert_allclose(weights @ at_nodes**degree, expected, atol=1e-11 * counts.sum())
 
 

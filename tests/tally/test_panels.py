@@ -16,19 +16,19 @@ from reweight.tally.leaves import leaf_sums
 from reweight.tally.nodes import COUNT, Column, Nodes
 from reweight.tally.panels import (
     ORDER,
-    chebyshev_values,
     node_energies,
     node_matrix,
     nodes,
     panel_indices,
     panel_width,
+    powers,
 )
 
 
 def node_weights(energies: np.ndarray, width: float, reference_index: int) -> tuple[np.ndarray, np.ndarray]:
     """Energies of the nodes relative to the reference, and the weights the samples give them."""
     leaves = leaf_sums(energies[:, None], 2**20, Nodes(width), (COUNT,), [])
-    weights = (leaves.sums[0, 0] @ node_matrix()).ravel()
+    weights = (leaves.sums[0, 0].T @ node_matrix()).ravel()
     return node_energies(leaves.keys, width, reference_index), weights
 
 
@@ -83,7 +83,7 @@ def test_sums_agree_with_one_sample_at_a_time() -> None:
         assert list(leaves.keys) == sorted(expected)
         for place, key in enumerate(leaves.keys):
             # arccos near the ends of a panel costs the naive sum half its digits times the order
-            np.testing.assert_allclose(leaves.sums[column, :, place], expected[int(key)], atol=1e-11)
+            np.testing.assert_allclose(leaves.sums[column, :, :, place], expected[int(key)], atol=1e-11)
 
 
 def test_panels_far_apart_need_no_room_between_them() -> None:
@@ -91,13 +91,13 @@ def test_panels_far_apart_need_no_room_between_them() -> None:
     leaves = leaf_sums(energies[:, None], 4, Nodes(1.0), (COUNT,), [])
 
     np.testing.assert_array_equal(leaves.keys, [-(10**12), 0, 10**12])
-    np.testing.assert_array_equal(leaves.sums[0, 0, :, 0], [1, 1, 1])
+    np.testing.assert_array_equal(leaves.sums[0, 0, 0], [1, 1, 1])
 
 
 @pytest.mark.parametrize("energy", [2.0**52, -(2.0**52) - 2, 1e300])
 def test_energies_too_large_for_their_fluctuation_are_refused(energy: float) -> None:
     with pytest.raises(InputError, match=r"energies must be smaller than 4\.5e\+15.*Check the unit"):
-        panel_indices(np.array([0.0, energy]), 1.0)
+        leaf_sums(np.array([[0.0], [energy]]), 4, Nodes(1.0), (COUNT,), [])
 
 
 def test_the_panel_of_an_energy_and_its_place_in_it_are_exact_at_large_offsets() -> None:
@@ -125,14 +125,17 @@ def test_a_resolution_narrows_panels_and_constant_runs_get_a_width() -> None:
     assert panel_width(0.0, 0.0) == 1
 
 
-def test_chebyshev_values_are_those_of_the_cosine() -> None:
-    x = np.linspace(-1, 1, 101)
+def test_the_node_matrix_is_the_published_form_in_chebyshev_polynomials() -> None:
+    """W_q = (1/p) [S_0 + 2 sum T_j(x_q) S_j], S_j the sums of T_j: interpolation at Chebyshev nodes (no source)."""
+    t = np.random.default_rng(3).uniform(-1, 1, 50)
+    j = np.arange(ORDER)[:, None]
+    sums = np.cos(j * np.arccos(t)).sum(axis=1)
+    factor = np.where(j == 0, 1, 2) / ORDER
 
-    np.testing.assert_allclose(
-        chebyshev_values(x), np.cos(np.arange(ORDER)[:, None] * np.arccos(x)), atol=1e-13
-    )
+    expected = sums @ (factor * np.cos(j * np.arccos(nodes())))
+    np.testing.assert_allclose(powers(t).sum(axis=1) @ node_matrix(), expected, atol=1e-12)
 
 
 def test_nodes_are_the_zeros_of_the_next_polynomial_in_ascending_order() -> None:
     assert (np.diff(nodes()) > 0).all()
-    np.testing.assert_allclose(chebyshev_values(nodes(), ORDER + 1)[ORDER], 0, atol=1e-14)
+    np.testing.assert_allclose(np.cos(ORDER * np.arccos(nodes())), 0, atol=1e-14)

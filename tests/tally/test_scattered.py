@@ -25,7 +25,7 @@ def test_the_same_sums_stand_in_both_forms(length: int) -> None:
     np.testing.assert_array_equal(scattered.keys, full.keys)
     np.testing.assert_array_equal(scattered.rows, full.rows)
     placed = np.zeros_like(full.sums)
-    placed[:, scattered.leaf, scattered.place] = scattered.sums
+    placed.swapaxes(2, 3)[:, scattered.leaf, scattered.place] = scattered.sums
     np.testing.assert_array_equal(placed, full.sums)  # leaves up to 1024 rows are summed in row order in both
     assert scattered.leaf.size <= 5000
 

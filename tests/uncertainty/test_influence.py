@@ -24,6 +24,7 @@ from reweight.quantities.catalogue import available
 from reweight.quantities.moments import LOG_PARTITION, Moments
 from reweight.quantities.quantity import Quantity
 from reweight.tally.nodes import COUNT
+from reweight.tally.panels import nodes, powers
 from reweight.uncertainty.influence import block_sums, chain, influence
 from reweight.uncertainty.window import variance
 
@@ -74,11 +75,13 @@ def with_added_weight(
     """
     estimate, weighting = combined.estimate, inefficiencies(combined)
     parts = list(estimate.assembly.runs)
-    weights = [each.copy() for each in parts[run].weights]
+    sums = [each.copy() for each in parts[run].sums]
     rows = parts[run].rows.astype(float)
-    weights[column][3, node] += weight * weighting[run]
+    key, local = divmod(node, estimate.assembly.order)
+    sample = powers(nodes(estimate.assembly.order)[local : local + 1], estimate.assembly.order)[:, 0]
+    sums[column][3, key :: parts[run].place.size] += weight * weighting[run] * sample
     rows[3] += weight * weighting[run] * counted
-    parts[run] = dataclasses.replace(parts[run], weights=tuple(weights), rows=rows)
+    parts[run] = dataclasses.replace(parts[run], sums=tuple(sums), rows=rows)
     changed = Estimate.solved(
         dataclasses.replace(estimate.assembly, runs=tuple(parts)),
         estimate.columns,
