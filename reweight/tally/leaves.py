@@ -1,9 +1,9 @@
 r"""Leaves: a run cut into 64 to 127 stretches of equal length, tallied in one pass, with the same bits every time.
 
 A run is tallied in leaves of ``2**k`` consecutive rows counted from its first row.  At 128 leaves neighbours are added
-pairwise and k grows by one.  Inside a leaf, sums are taken over base blocks of 1024 rows in row order and the blocks
-are added as a balanced binary tree, so that a leaf of ``2**(k+1)`` rows is bit for bit the sum of its two halves:
-chunk size, number of workers, and whether a run is tallied in one sitting or several change nothing.
+pairwise and k grows by one.  When a stretch of rows is turned into leaves depends on the number of rows alone, and
+inside a leaf they are added in row order (by stretches of 16,384, which are then added as a tree); so chunk size,
+number of workers, and whether a run is tallied in one sitting or several change no bit.
 
 A run much wider than the narrowest of its study visits more panels than a leaf has rows; its leaves are then kept
 without the gaps between the panels they visit.
@@ -37,8 +37,7 @@ __all__ = [
 ]
 
 MOST_LEAVES = 128
-BASE = 1024
-STRIDE = 16 * BASE  # rows handled at a time: what belongs to them fits the second-level cache
+STRIDE = 2**14  # rows handled at a time: what belongs to them stays near the processor
 
 # Panels numbered without gaps from the lowest to the highest; beyond so many, that could cost any amount of memory.
 CONTIGUOUS = 4096
@@ -148,7 +147,6 @@ def leaf_sums(
         Energy (already snapped), then the observables.
     """
     count = rows.shape[0]
-    base = min(length, BASE)
     keys, locate = _placed(np.ascontiguousarray(rows[:, 0]), nodes)
     weights = [None] + [np.ascontiguousarray(column_values(rows, c, observables)) for c in columns[1:]]
     leaf_count = -(-count // length)
@@ -156,28 +154,22 @@ def leaf_sums(
     unit = min(length, STRIDE)
     longest = min(count, STRIDE)
     buffer = np.empty((order, longest))
-    offsets = np.repeat(np.arange(-(-longest // base)) * size, base)[:longest]
+    offsets = np.repeat(np.arange(-(-longest // unit)) * size, unit)[:longest]
     sums = np.empty((len(columns), leaf_count * (length // unit), order, size))
     sums[:, -(-count // unit) :] = 0
     for start in range(0, count, STRIDE):
         here = slice(start, min(start + STRIDE, count))
-        number = here.stop - here.start
-        blocks = STRIDE // base if length > base else -(-number // base)
         place, coordinate = locate(here)
-        bins = place + offsets[:number]
-        values = powers(coordinate, order, out=buffer[:, :number])
+        bins = place + offsets[: place.size]
+        values = powers(coordinate, order, out=buffer[:, : place.size])
         filled = sums[:, start // unit : -(-here.stop // unit)]
-        # Blocks that are leaves by themselves are summed where they belong.
-        direct = unit == base
-        total = filled if direct else np.empty((len(columns), blocks, order, size))
+        shape = (filled.shape[1], size)
         for c, weight in enumerate(weights):
             for j in range(order):
                 factor = values[j] if j else None
                 if weight is not None:
                     factor = weight[here] if factor is None else weight[here] * factor
-                total[c, :, j] = np.bincount(bins, factor, minlength=blocks * size).reshape(blocks, size)
-        if not direct:
-            filled[...] = pairwise(total, 1, doublings(unit, base))[:, : filled.shape[1]]
+                filled[c, :, j] = np.bincount(bins, factor, minlength=shape[0] * size).reshape(shape)
     sums = pairwise(sums, 1, doublings(length, unit))
     occupied = np.flatnonzero(sums[0, :, 0].any(axis=0))
     return LeafSums(
@@ -211,7 +203,10 @@ def at_most_keys(energies: NDArray[np.float64], nodes: Nodes, enough: int) -> in
     lowest, highest = _span(energies, nodes.width)
     if highest - lowest < enough:
         return highest - lowest + 1
-    return int(np.unique(np.floor(energies / nodes.width)).size)
+    index = np.floor(energies / nodes.width)
+    if highest - lowest < CONTIGUOUS:
+        return int(np.count_nonzero(np.bincount((index - lowest).astype(np.int64))))
+    return int(np.unique(index).size)
 
 
 def scattered_sums(

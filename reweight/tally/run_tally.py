@@ -13,7 +13,6 @@ import numpy as np
 from numpy.typing import NDArray
 
 from reweight.tally.leaves import (
-    BASE,
     MOST_LEAVES,
     LeafSums,
     ScatteredSums,
@@ -30,7 +29,7 @@ from reweight.tally.tree import pairwise
 
 __all__ = ["RunTally"]
 
-BATCH = 64 * BASE
+BATCH = 2**16
 GROUPS_A_LEAF = 128
 
 # Leaves without gaps are faster, but may not take more than so many numbers for each kept one, or so many in all.

@@ -1,4 +1,4 @@
-"""Sums as a balanced binary tree: a sum over twice as many rows is, bit for bit, the sum of its two halves."""
+"""Sums as a balanced binary tree."""
 
 from __future__ import annotations
 
