@@ -99,9 +99,9 @@ def pairwise_start(weights: Array, counts: Array, beta: Array, energies: Array) 
             return float(pair @ expit(d + offset)) - target
 
         middle = step * 0.5 * (weights[a] @ energies / counts[a] + weights[b] @ energies / counts[b])
-        reach = 1.0
+        reach = 0.1
         while excess(middle - reach) > 0 or excess(middle + reach) < 0:
-            reach *= 2
+            reach *= 4
             if reach > 1e12:
                 raise ConvergenceError(
                     "two neighbouring runs could not be joined: their energies exceed double precision"

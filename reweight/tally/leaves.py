@@ -113,8 +113,9 @@ def _placed(energies: NDArray[np.float64], nodes: Nodes) -> tuple[NDArray[Any], 
 
         def locate(here: slice) -> tuple[NDArray[np.int64], NDArray[np.float64]]:
             index, coordinate = panel_indices(energies[here], nodes.width)
-            index -= lowest
-            return index.astype(np.int64), coordinate
+            place = index.astype(np.int64)
+            place -= lowest
+            return place, coordinate
 
         return np.arange(lowest, highest + 1), locate
     index, coordinate = panel_indices(energies, nodes.width)
@@ -153,15 +154,16 @@ def leaf_sums(
     size, order = keys.size, nodes.order
     unit = min(length, STRIDE)
     longest = min(count, STRIDE)
-    buffer = np.empty((order, longest))
+    buffer = np.ones((order, longest))
     offsets = np.repeat(np.arange(-(-longest // unit)) * size, unit)[:longest]
     sums = np.empty((len(columns), leaf_count * (length // unit), order, size))
     sums[:, -(-count // unit) :] = 0
     for start in range(0, count, STRIDE):
         here = slice(start, min(start + STRIDE, count))
         place, coordinate = locate(here)
-        bins = place + offsets[: place.size]
-        values = powers(coordinate, order, out=buffer[:, : place.size])
+        number = place.size
+        place += offsets[:number]
+        values = powers(coordinate, order, out=buffer[:, :number])
         filled = sums[:, start // unit : -(-here.stop // unit)]
         shape = (filled.shape[1], size)
         for c, weight in enumerate(weights):
@@ -169,7 +171,7 @@ def leaf_sums(
                 factor = values[j] if j else None
                 if weight is not None:
                     factor = weight[here] if factor is None else weight[here] * factor
-                filled[c, :, j] = np.bincount(bins, factor, minlength=shape[0] * size).reshape(shape)
+                filled[c, :, j] = np.bincount(place, factor, minlength=shape[0] * size).reshape(shape)
     sums = pairwise(sums, 1, doublings(length, unit))
     occupied = np.flatnonzero(sums[0, :, 0].any(axis=0))
     return LeafSums(

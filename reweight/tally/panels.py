@@ -90,7 +90,7 @@ def panel_indices(
 
     Exact for energies that :func:`check_magnitude` lets pass.
     """
-    scaled = energies / width
+    scaled = energies * (1 / width)  # exact, as the division would be: the width is a power of two
     index = np.floor(scaled)
     scaled -= index
     scaled *= 2
@@ -101,9 +101,8 @@ def panel_indices(
 def powers(
     coordinate: NDArray[np.float64], order: int = ORDER, *, out: NDArray[np.float64] | None = None
 ) -> NDArray[np.float64]:
-    """Powers 0 .. order-1 of a coordinate, shape (order, N); into ``out`` if given."""
-    values = np.empty((order, coordinate.size)) if out is None else out
-    values[0] = 1
+    """Powers 0 .. order-1 of a coordinate, shape (order, N); into ``out``, whose first row is ones, if given."""
+    values = np.ones((order, coordinate.size)) if out is None else out
     if order > 1:
         values[1] = coordinate
     for j in range(2, order):
