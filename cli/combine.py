@@ -112,16 +112,17 @@ def _print(combined: DensityOfStates, found: list[Finding], target: Path) -> Non
     if len(shown) < len(combined.runs):
         click.echo(_in_short(combined, "the others: " if shown else ""))
     click.echo(_account(combined))
-    for line in _headline(combined):
+    headline = _headline(combined)
+    for line in headline:
         click.echo(line)
     for each in concerns[:MOST_CAUTIONS]:
         click.echo(f"{each.verdict}: {each.summary}; {each.advice}")
     if len(concerns) > MOST_CAUTIONS:
         click.echo(f"and {screen.counted(len(concerns) - MOST_CAUTIONS, 'more finding')}; --json lists all")
     size = target.stat().st_size
-    click.echo(
-        f"{worst(found)}; wrote {target} ({size / 1e6:.2g} MB); next: reweight curve {target} --plot curve.png"
-    )
+    reaches = any("support answers from" in line for line in headline)
+    following = f"reweight curve {target} --plot curve.png" if reaches else f"reweight runs {target}"
+    click.echo(f"{worst(found)}; wrote {target} ({size / 1e6:.2g} MB); next: {following}")
 
 
 def _runs_to_show(combined: DensityOfStates, concerns: list[Finding]) -> list[int]:
@@ -183,12 +184,22 @@ def _headline(combined: DensityOfStates) -> list[str]:
     if within.empty:
         return [f"these runs support no answers yet: {within.limited_by[0]}"]
     low, high = inside(within.lowest, within.highest)
-    lines = [f"these runs support answers from {low} to {high} {unit}".rstrip()]
+    lines = [
+        f"these runs support answers from {low} to {high} {unit}".rstrip() + _beyond_for_energies(combined)
+    ]
     try:
         best = peaks(combined)[0]
     except OutOfReachError as error:
         return [*lines, str(error)]
     return [*lines, *describe_peak(combined, best, 0.95)[:2], *describe_extension(best)]
+
+
+def _beyond_for_energies(combined: DensityOfStates) -> str:
+    from reweight.answers.reach import reach
+    from reweight.notation import within
+
+    ends = reach(combined, "energy")
+    return "" if ends.empty else " (mean energies: {} to {})".format(*within(ends.lowest, ends.highest))
 
 
 def _record(combined: DensityOfStates, found: list[Finding], target: Path) -> dict[str, Any]:

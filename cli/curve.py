@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -103,6 +104,27 @@ def curve(
         _print(dataset)
     outside = int((~dataset["within_reach"]).sum())
     screen.tell_outside(outside, dataset.sizes["temperature"], beyond=beyond_reach, quiet=quiet)
+    if outside:
+        _say_why(combined, dataset, of or DEFAULT_QUANTITIES, quiet=quiet)
+
+
+def _say_why(combined: DensityOfStates, dataset: xr.Dataset, names: Sequence[str], *, quiet: bool) -> None:
+    """Tell how far each quantity that left the reach goes, and what ends it."""
+    from reweight.answers.reach import reach
+    from reweight.notation import within
+
+    for label, name in zip(_labels(dataset), names, strict=True):
+        if bool(dataset[f"{label}_within_reach"].all()):
+            continue
+        ends = reach(combined, name)
+        if ends.empty:
+            screen.message(f"  {name}: {ends.limited_by[0]}", quiet=quiet)
+            continue
+        low, high = within(ends.lowest, ends.highest)
+        screen.message(
+            f"  {name}: within {low} to {high}; colder: {ends.limited_by[0]}; hotter: {ends.limited_by[1]}",
+            quiet=quiet,
+        )
 
 
 def _labels(dataset: xr.Dataset) -> list[str]:
@@ -131,7 +153,7 @@ def _numbers(dataset: xr.Dataset) -> tuple[list[str], list[list[Any]]]:
     for label in _labels(dataset):
         unit = dataset[label].attrs["units"]
         interval = dataset[f"{label}_interval"].to_numpy()
-        header += [f"{label}{part} [{unit}]" for part in ("", "_standard_error", "_lower", "_upper")]
+        header += [f"{label}{part} [{unit}]" for part in screen.PARTS]
         columns += [
             dataset[label].to_numpy(),
             dataset[f"{label}_standard_error"].to_numpy(),

@@ -80,10 +80,15 @@ def _write_csv(dataset: xr.Dataset, path: Path, *, force: bool, inputs: list[Pat
     energy_unit, unit = dataset["energy"].attrs["units"], dataset["probability"].attrs["units"]
     header = [f"{name} [{energy_unit}]" for name in ("energy", "energy_lower", "energy_upper")]
     columns = [dataset[name].to_numpy() for name in ("energy", "energy_lower", "energy_upper")]
-    for place, temperature in enumerate(dataset["temperature"].to_numpy()):
-        for name in ("probability", "probability_standard_error"):
-            header.append(f"{name} at {temperature:g} [{unit}]")
-            columns.append(dataset[name][place].to_numpy())
+    for place, temperature in enumerate(_temperatures(dataset)):
+        interval = dataset["probability_interval"][place].to_numpy()
+        header += [f"probability{part} at {temperature} [{unit}]" for part in screen.PARTS]
+        columns += [
+            dataset["probability"][place].to_numpy(),
+            dataset["probability_standard_error"][place].to_numpy(),
+            interval[:, 0],
+            interval[:, 1],
+        ]
     for place, run in enumerate(dataset["run"].to_numpy()):
         header.append(f"run_histogram of {run} [{unit}]")
         columns.append(dataset["run_histogram"][place].to_numpy())
@@ -91,11 +96,16 @@ def _write_csv(dataset: xr.Dataset, path: Path, *, force: bool, inputs: list[Pat
     screen.write_csv(path, header, rows, force=force, inputs=inputs)
 
 
+def _temperatures(dataset: xr.Dataset) -> list[str]:
+    unit = dataset["temperature"].attrs["units"]
+    return [f"{each:g}" + ("" if unit == "1" else f" {unit}") for each in dataset["temperature"].to_numpy()]
+
+
 def _print(dataset: xr.Dataset) -> None:
     from reweight.notation import bracket
 
-    unit = dataset["energy"].attrs["units"]
-    titles = [f"at {temperature:g}" for temperature in dataset["temperature"].to_numpy()]
+    kind = "probability" if (dataset["energy_lower"] == dataset["energy_upper"]).all() else "density"
+    titles = [screen.titled(f"{kind} at {each}", dataset["probability"]) for each in _temperatures(dataset)]
     value, error = (dataset[name].to_numpy() for name in ("probability", "probability_standard_error"))
     rows = [
         (
@@ -107,4 +117,4 @@ def _print(dataset: xr.Dataset) -> None:
         )
         for x, energy in enumerate(dataset["energy"].to_numpy())
     ]
-    screen.print_table(("energy" + ("" if unit == "1" else f" [{unit}]"), *titles), rows)
+    screen.print_table((screen.titled("energy", dataset["energy"]), *titles), rows)

@@ -108,7 +108,7 @@ def question_options(command: Command) -> Command:
             default="linear",
             show_default=True,
             callback=_only_linear,
-            help="How error bars are made.",
+            help="How error bars are made (bootstrap: not built yet).",
         ),
         click.option(
             "--beyond-reach", is_flag=True, help="Answer where the runs do not support it, too; marked."

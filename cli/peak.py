@@ -47,8 +47,11 @@ def peak(
     asked = {"per_count": per_count, "energy_unit": energy_unit, "level": level, "beyond_reach": beyond_reach}
     found = peaks(combined, of=of, lowest=lowest, highest=highest, **asked)  # type: ignore[arg-type]
     if csv is not None:
-        header = list(_record(found[0]))
-        screen.write_csv(csv, header, [list(_flat(each)) for each in found], force=force, inputs=[file])
+        units = (combined.description.temperature_label or "1", found[0].unit)
+        records = [_flat(each, *units) for each in found]
+        screen.write_csv(
+            csv, list(records[0]), [list(each.values()) for each in records], force=force, inputs=[file]
+        )
     if plot is not None:
         from reweight.answers.curve import curve
         from reweight.figures.curves import curve_figure
@@ -71,8 +74,30 @@ def _record(found: Peak) -> dict[str, Any]:
     return dataclasses.asdict(found)
 
 
-def _flat(found: Peak) -> list[Any]:
-    return [" ".join(map(repr, v)) if isinstance(v, tuple) else v for v in _record(found).values()]
+def _flat(found: Peak, temperature_unit: str, height_unit: str) -> dict[str, Any]:
+    """One row of a table, by column heading."""
+    row: dict[str, Any] = {"of": found.of}
+    parts = {
+        "temperature": (found.temperature, found.temperature_standard_error, *found.temperature_interval),
+        "height": (found.height, found.height_standard_error, *found.height_interval),
+    }
+    for (name, values), unit in zip(parts.items(), (temperature_unit, height_unit), strict=True):
+        row |= {f"{name}{part} [{unit}]": value for part, value in zip(screen.PARTS, values, strict=True)}
+    for name in (
+        "correlation",
+        "prominence",
+        "stands_out",
+        "at_edge",
+        "effective_sample_size",
+        "within_reach",
+    ):
+        row[name] = getattr(found, name)
+    for run, (of_temperature, of_height) in found.variance_share.items():
+        row |= {
+            f"temperature_variance_share of {run}": of_temperature,
+            f"height_variance_share of {run}": of_height,
+        }
+    return row
 
 
 def _print(combined: DensityOfStates, found: tuple[Peak, ...], level: float) -> None:
@@ -121,7 +146,7 @@ def describe_peak(combined: DensityOfStates, found: Peak, level: float) -> list[
 
 def describe_extension(found: Peak) -> list[str]:
     """Say which run to extend, and what four times its samples would bring."""
-    if found.at_edge or len(found.variance_share) < 2:
+    if not found.stands_out or len(found.variance_share) < 2:
         return []
     name, (share, _) = max(found.variance_share.items(), key=lambda item: item[1][0])
     error = found.temperature_standard_error

@@ -15,9 +15,12 @@ import click
 from reweight.files import write_text
 
 if TYPE_CHECKING:
+    import xarray as xr
+
     from reweight.density_of_states import DensityOfStates, Description
 
 __all__ = [
+    "PARTS",
     "amount",
     "counted",
     "echo_temperatures",
@@ -28,9 +31,20 @@ __all__ = [
     "print_json",
     "print_table",
     "tell_outside",
+    "titled",
     "units_text",
     "write_csv",
 ]
+
+
+# A value, its standard error and the ends of its interval, as columns of a table.
+PARTS = ("", "_standard_error", "_lower", "_upper")
+
+
+def titled(name: str, values: xr.DataArray) -> str:
+    """Heading of a column with its unit, if it has one."""
+    unit = values.attrs["units"]
+    return name if unit == "1" else f"{name} [{unit}]"
 
 
 def message(text: str, *, quiet: bool = False) -> None:

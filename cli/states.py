@@ -52,8 +52,9 @@ def states(
             LABEL,
             f"{LABEL}_standard_error",
             "independent_samples",
+            "well_visited",
         ]
-        header = [f"{name} [{dataset[name].attrs['units']}]" for name in names]
+        header = [f"{name} [{dataset[name].attrs.get('units', '1')}]" for name in names]
         rows = zip(*(dataset[name].to_numpy().tolist() for name in names), strict=True)
         screen.write_csv(csv, header, rows, force=force, inputs=[file])
     if plot is not None:

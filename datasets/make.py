@@ -247,7 +247,7 @@ def _readme(setting: Setting, entries: list[dict[str, Any]]) -> str:
 # {setting.folder.replace("_", " ").capitalize()}
 
 {setting.origin}
-Made by `{setting.folder}.py` of this package; the system exists nowhere else. `study.toml` describes the runs.
+Made by `{setting.folder}.py` of this package, for this purpose. `study.toml` describes the runs.
 
 Columns and units, {setting.row_count} rows a file, one every {setting.interval} {setting.units["step"]}
 (the start-up is part of the files):

@@ -301,4 +301,7 @@ class DensityOfStates:
     def __repr__(self) -> str:
         title = f" {self.description.title!r}" if self.description.title else ""
         samples = sum(run.samples for run in self.runs)
-        return f"<DensityOfStates{title}: {len(self.runs)} runs, {samples} samples>"
+        low, high = (f"{each:g}" for each in (self.temperatures.min(), self.temperatures.max()))
+        unit = self.description.temperature_label
+        scale = f"{unit}, energies in {self.description.energy_unit}" if unit else "(reduced units, k_B = 1)"
+        return f"<DensityOfStates{title}: {len(self.runs)} runs, {samples} samples, {low} to {high} {scale}>"

@@ -149,10 +149,10 @@ def open_combined(path: str | os.PathLike[str]) -> DensityOfStates:
     with NETCDF_LOCK:
         try:
             file = netCDF4.Dataset(path, "r")
-        except OSError as error:
+        except OSError:
             raise CombinedFileError(
-                f"{name!r} must be a combined file written by reweight; it is no readable NetCDF file ({error}). "
-                "If it is a study, run: reweight combine"
+                f"{name!r} must be a combined file written by reweight; it is no readable NetCDF file. "
+                "If it is a study (TOML), run: reweight combine STUDY.toml"
             ) from None
         with file:
             file.set_auto_mask(False)

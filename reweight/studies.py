@@ -87,7 +87,7 @@ def combine(
     >>> import numpy as np, reweight as rw
     >>> rng = np.random.default_rng(1)
     >>> rw.combine({"cold": rng.gamma(30.0, 1.0, 2000), "hot": rng.gamma(30.0, 1.2, 2000)}, temperatures=[1.0, 1.2])
-    <DensityOfStates: 2 runs, ... samples>
+    <DensityOfStates: 2 runs, ... samples, 1 to 1.2 (reduced units, k_B = 1)>
     """
     given = (temperatures, energy_unit, temperature_unit, count, states, ground_degeneracy, observables)
     changed = (per, title, weighting, discard) != ("particle", "", "independent", "auto")

@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -35,7 +36,7 @@ class Bins:
     Attributes
     ----------
     of_node : numpy.ndarray, shape (Q,)
-        Bin of each node.
+        Bin of each node; one past the last for nodes that only a transient visited.
     energy : numpy.ndarray, shape (X,)
         The level, or the centre of the bin; on the study's scale.
     width : float or None
@@ -53,7 +54,7 @@ class Bins:
 
     def sums(self, values: Array) -> Array:
         """Sum node values over each bin, shape (X,)."""
-        return np.asarray(np.bincount(self.of_node, values, minlength=self.count), float)
+        return np.asarray(np.bincount(self.of_node, values, minlength=self.count + 1)[: self.count], float)
 
     def edges(self) -> tuple[Array, Array]:
         """Lower and upper end of each bin; both the level itself for levels."""
@@ -78,10 +79,10 @@ def energy_bins(combined: DensityOfStates, width: float | None = None) -> Bins:
     assembly = combined.estimate.assembly
     if width is not None:
         _check_width(assembly, width)
+    visited = combined.estimate.independent.reshape(-1, assembly.order).sum(axis=1) > 0
     if assembly.discrete and width is None:
-        return Bins(
-            of_node=np.arange(assembly.keys.size), energy=np.asarray(assembly.keys, float), width=None
-        )
+        present, number = assembly.keys[visited], np.asarray(assembly.keys)
+        return Bins(of_node=_places(present, number, 1), energy=np.asarray(present, float), width=None)
     if assembly.discrete:
         assert width is not None
         number = np.floor(assembly.keys / width).astype(np.int64)
@@ -89,12 +90,18 @@ def energy_bins(combined: DensityOfStates, width: float | None = None) -> Bins:
         panels = PANELS_A_BIN if width is None else round(width / assembly.width)
         number = np.asarray(assembly.keys, np.int64) // panels
         width = panels * assembly.width
-    present, place = np.unique(number, return_inverse=True)
+    present = np.unique(number[visited])
     return Bins(
-        of_node=np.repeat(place, assembly.order),
+        of_node=_places(present, number, assembly.order),
         energy=np.asarray((present + 0.5) * width, float),
         width=width,
     )
+
+
+def _places(present: NDArray[Any], number: NDArray[Any], order: int) -> NDArray[np.int64]:
+    """Place of each key's number among those present, once a node; one past the last if it is not."""
+    place = np.minimum(np.searchsorted(present, number), present.size - 1)
+    return np.repeat(np.where(present[place] == number, place, present.size), order)
 
 
 def _check_width(assembly: Assembly, width: float) -> None:

@@ -124,7 +124,8 @@ def curve(
         )
         long_name = quantity.long_name
         if quantity.from_reference:
-            long_name += f", counted from {significant(float(combined.description.temperature(origin)))}"
+            counted_from = significant(float(combined.description.temperature(origin)))
+            long_name += f", counted from {counted_from} {combined.description.temperature_label}".rstrip()
         attributes = value_attributes(
             quantity.label,
             long_name,

@@ -16,7 +16,7 @@ import xarray as xr
 from numpy.typing import NDArray
 
 from reweight.answers.bins import FEWEST_VISITS, Bins, bin_blocks, energy_bins
-from reweight.answers.evaluate import evaluate
+from reweight.answers.evaluate import Evaluation, evaluate
 from reweight.answers.reach import MOST_END_MASS
 from reweight.density_of_states import DensityOfStates
 from reweight.errors import InputError, OutOfReachError
@@ -116,7 +116,9 @@ def _anchor(
 ) -> tuple[float, list[Array]]:
     """Shift of ln g that makes it absolute, and the block sums of what it is counted from."""
     description = combined.description
-    if description.log_states is not None:
+    if description.log_states is not None and (
+        description.ground_degeneracy is None or _infinite_temperature(combined).within_reach[0]
+    ):
         _refuse_unless_infinite_temperature_is_in_reach(combined)
         canonical = combined.estimate.canonical(np.zeros(1))
         influences = Influence(with_free_energies(combined.estimate, {COUNT: canonical.weights}))
@@ -142,8 +144,13 @@ def _anchor(
     )
 
 
+def _infinite_temperature(combined: DensityOfStates) -> Evaluation:
+    (answer,) = evaluate(combined, combined.quantities(["energy"]), np.zeros(1))
+    return answer
+
+
 def _refuse_unless_infinite_temperature_is_in_reach(combined: DensityOfStates) -> None:
-    (at_infinity,) = evaluate(combined, combined.quantities(["energy"]), np.zeros(1))
+    at_infinity = _infinite_temperature(combined)
     if at_infinity.within_reach[0]:
         return
     hottest = float(combined.temperatures.max())

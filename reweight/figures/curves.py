@@ -57,12 +57,14 @@ def simulated_marks(axes: Axes, combined: DensityOfStates) -> Axes:
 
 
 def draw_peak(axes: Axes, peak: Peak) -> Axes:
-    """Draw a peak with the standard errors of its position and height."""
+    """Draw a peak with the confidence intervals of its position and height."""
+    low, high = peak.temperature_interval
+    bottom, top = peak.height_interval
     axes.errorbar(
         peak.temperature,
         peak.height,
-        xerr=None if peak.at_edge else peak.temperature_standard_error,
-        yerr=peak.height_standard_error,
+        xerr=None if peak.at_edge else [[peak.temperature - low], [high - peak.temperature]],
+        yerr=[[peak.height - bottom], [top - peak.height]],
         color=MARK,
         marker="o",
         markersize=3,
@@ -88,6 +90,7 @@ def curve_figure(combined: DensityOfStates, dataset: xr.Dataset, marked: Sequenc
         for peak in marked:
             draw_peak(panels[-1], peak)
         shape = "bars" if dataset.sizes["temperature"] < FEW else "band"
+        shape += " and cross" if marked else ""
         text = f"{shape}: {100 * dataset.attrs['level']:g} % interval; triangles: simulated temperatures"
         figure.suptitle(text, fontsize=7)
     return figure

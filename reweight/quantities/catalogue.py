@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import difflib
 from collections.abc import Callable, Iterable, Mapping
 
 from reweight.errors import NotInFileError
@@ -50,7 +51,9 @@ def named(names: Iterable[str], normalisations: Mapping[str, str]) -> list[Quant
     known = available(normalisations)
     unknown = [name for name in names if name not in known]
     if unknown:
+        near = difflib.get_close_matches(unknown[0].lower(), known, n=1, cutoff=0.4)
+        hint = f" Did you mean {near[0]!r}?" if near else ""
         raise NotInFileError(
-            f"a quantity must be one of {', '.join(known)}; got {unknown[0]!r}.", available=tuple(known)
+            f"a quantity must be one of {', '.join(known)}; got {unknown[0]!r}.{hint}", available=tuple(known)
         )
     return [known[name] for name in names]

@@ -47,7 +47,7 @@ def load_study(path: str | os.PathLike[str]) -> Study:
         line = error.object[: error.start].count(b"\n") + 1
         raise StudyError(
             f"study file {str(source)!r} must be UTF-8 text; got byte 0x{error.object[error.start]:02x} "
-            f"(line {line}). Save it as UTF-8."
+            f"(line {line}). Save it as UTF-8; if it is a combined file, it is ready to be asked: reweight show FILE."
         ) from error
     return _parse(text, folder=source.parent, path=source)
 

@@ -360,3 +360,32 @@ def test_wider_confidence_gives_wider_intervals_around_the_same_values(lattice) 
     spread = [np.ptp(each[f"{LN_G}_interval"].to_numpy(), axis=1) for each in (narrow, wide)]
     moved = narrow[f"{LN_G}_standard_error"].to_numpy() > 0
     assert np.all(spread[0][moved] < spread[1][moved])
+
+
+def test_levels_that_only_a_transient_visited_are_no_levels() -> None:
+    rng = np.random.default_rng(3)
+    levels, log_degeneracies = lattice_log_degeneracies(8)
+    runs = {f"{t}": draw_levels(levels, log_degeneracies, t, 4000, rng) for t in (2.0, 2.3)}
+    runs["2.0"][:100] = 96.0  # started hot: a level that no equilibrated sample reaches
+
+    combined = rw.combine(runs, temperatures=[2.0, 2.3], discard=200)
+
+    assert 96.0 in combined.estimate.assembly.keys
+    for answer in (rw.states(combined), rw.distribution(combined, 2.1)):
+        assert 96.0 not in answer.energy
+    assert (rw.states(combined).independent_samples > 0).all()
+    assert float(rw.distribution(combined, 2.1).probability.sum()) == pytest.approx(1, abs=1e-12)
+
+
+def test_of_two_declared_anchors_the_one_that_was_sampled_is_used() -> None:
+    rng = np.random.default_rng(4)
+    levels, log_degeneracies = lattice_log_degeneracies(8)
+    runs = {f"{t}": draw_levels(levels, log_degeneracies, t, 8000, rng) for t in (1.8, 2.1)}
+
+    combined = rw.combine(runs, temperatures=[1.8, 2.1], states="2^64", ground_degeneracy=2)
+
+    answer = rw.states(combined, absolute=True)
+    assert float(answer[LN_G][0]) == pytest.approx(math.log(2), abs=1e-12)  # two ground states
+    off = rw.combine(runs, temperatures=[1.8, 2.1], states="2^64")
+    with pytest.raises(rw.OutOfReachError, match="infinite temperature"):
+        rw.states(off, absolute=True)

@@ -195,3 +195,23 @@ def test_an_interruption_leaves_nothing_behind(monkeypatch, study, reweight):
 
     assert reweight("combine", study).status == 130
     assert sorted(study.parent.iterdir()) == before
+
+
+def test_a_peak_is_one_row_of_plain_cells_with_units(combined, tmp_path, reweight):
+    target = tmp_path / "peak.csv"
+    answer = json.loads(reweight("peak", combined, "--csv", target, "--json").stdout)
+
+    with target.open(newline="") as stream:
+        rows = list(csv.DictReader(stream))
+    assert len(rows) == len(answer["peaks"])
+    assert float(rows[0]["height [kJ mol-1 K-1]"]) == answer["peaks"][0]["height"]
+    assert float(rows[0]["height_lower [kJ mol-1 K-1]"]) == answer["peaks"][0]["height_interval"][0]
+    assert not any("{" in cell or "None" in cell for row in rows for cell in row.values())
+    shares = [float(value) for name, value in rows[0].items() if name.startswith("height_variance_share")]
+    assert sum(shares) == pytest.approx(1)
+
+
+def test_a_temperature_out_of_reach_is_told_why(combined, reweight):
+    outcome = reweight("curve", combined, "--at", "310,700")
+
+    assert re.search(r"heat_capacity: within \d+\.\d to \d+\.\d; colder: .*; hotter: ", outcome.stderr)

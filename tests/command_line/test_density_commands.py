@@ -159,7 +159,7 @@ def test_distribution_prints_a_column_a_temperature_and_echoes_them(lattice_file
 
     assert outcome.status == 0
     header, *rows = columns(outcome.stdout)
-    assert header == ["energy", "at 2.3", "at 5", "at inf"]
+    assert header == ["energy", "probability at 2.3", "probability at 5", "probability at inf"]
     assert "at 2.3, 5, inf" in outcome.stderr
     assert all(len(row) == 4 for row in rows)
 
@@ -265,7 +265,7 @@ def test_an_entropy_says_what_it_is_counted_from(combined, reweight):
     default = reweight("curve", combined, "--of", "entropy", "--at", "310")
     moved = reweight("curve", combined, "--of", "entropy", "--at", "310,320", "--reference", "320")
 
-    assert "entropy, counted from 300 [kJ mol-1 K-1]" in default.stdout
+    assert "entropy, counted from 300 K [kJ mol-1 K-1]" in default.stdout
     assert "entropy, counted from 320" in moved.stdout
     assert columns(moved.stdout)[2][1] == "0"  # at the reference itself
 
