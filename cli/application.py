@@ -11,6 +11,7 @@ import sys
 from collections.abc import Sequence
 
 import click
+
 from reweight.cli.combine import combine
 from reweight.cli.curve import curve
 from reweight.cli.demo import demo
@@ -20,7 +21,6 @@ from reweight.cli.peak import peak
 from reweight.cli.runs import runs
 from reweight.cli.show import show
 from reweight.cli.states import states
-
 from reweight.errors import ReweightError
 from reweight.version import VERSION
 

@@ -8,6 +8,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import click
+
 from reweight.cli import options, screen
 from reweight.cli.peak import describe_extension, describe_peak
 from reweight.cli.runs import one_in, runs_record, runs_table

@@ -6,6 +6,7 @@ import shutil
 from pathlib import Path
 
 import click
+
 from reweight.cli import options
 from reweight.cli.combine import run_combine
 
@@ -20,10 +21,9 @@ def demo(folder: Path) -> None:
     FOLDER must not exist yet.  The runs were made by simulators of our own: a chain of beads that collapses on
     cooling, and a square lattice of two-state sites whose answers are known exactly.
     """
-    from reweight.datasets import SHIPPED, shipped
-
     from reweight.answers.curve import curve
     from reweight.answers.peak import peaks
+    from reweight.datasets import SHIPPED, shipped
     from reweight.errors import OutputError
     from reweight.figures.curves import curve_figure
     from reweight.figures.style import save_figure

@@ -6,6 +6,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING
 
 import click
+
 from reweight.cli import options, screen
 
 if TYPE_CHECKING:

@@ -6,6 +6,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import click
+
 from reweight.cli import options, screen
 from reweight.cli.runs import print_inputs, runs_record
 

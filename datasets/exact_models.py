@@ -13,8 +13,9 @@ from functools import cache
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
-from reweight.datasets.exact import Canonical
 from scipy.special import gammaln
+
+from reweight.datasets.exact import Canonical
 
 __all__ = [
     "FOUR_BY_FOUR_STATES",

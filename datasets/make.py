@@ -15,6 +15,7 @@ from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
+
 from reweight.datasets.bead_chain import BeadChain, simulate_bead_chain
 from reweight.datasets.square_lattice import simulate_square_lattice
 

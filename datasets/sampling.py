@@ -12,9 +12,10 @@ and the result has no such axis.  Units: k_B = 1.  Shape letters: S series, N dr
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
-from reweight.datasets.exact_models import JointLevels
 from scipy.signal import lfilter
 from scipy.special import gammaincinv, ndtr, ndtri, softmax
+
+from reweight.datasets.exact_models import JointLevels
 
 __all__ = ["correlated_normals", "draw_gamma", "draw_gaussian", "draw_joint", "draw_levels"]
 

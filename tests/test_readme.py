@@ -8,6 +8,7 @@ import shutil
 from pathlib import Path
 
 import pytest
+
 from reweight.cli.application import main
 from reweight.datasets import shipped
 

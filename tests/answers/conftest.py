@@ -4,11 +4,11 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
+
+import reweight as rw
 from reweight.datasets.exact import lattice_log_degeneracies
 from reweight.datasets.exact_models import lattice_joint_levels
 from reweight.datasets.sampling import draw_gamma, draw_joint, draw_levels
-
-import reweight as rw
 
 GAS_CONSTANT = 8.31446261815324e-3  # kJ/(mol K), exact by definition (SI 2019)
 

@@ -10,12 +10,12 @@ import math
 
 import numpy as np
 import pytest
-from reweight.datasets.exact import canonical, lattice_log_degeneracies
-from reweight.datasets.exact_models import ladder_levels
-from reweight.datasets.sampling import draw_gaussian, draw_levels
 from scipy.special import ndtr, softmax
 
 import reweight as rw
+from reweight.datasets.exact import canonical, lattice_log_degeneracies
+from reweight.datasets.exact_models import ladder_levels
+from reweight.datasets.sampling import draw_gaussian, draw_levels
 from reweight.tally.levels import are_levels
 
 

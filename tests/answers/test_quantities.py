@@ -11,10 +11,10 @@ import math
 
 import numpy as np
 import pytest
-from reweight.datasets.exact import canonical, lattice_log_degeneracies
-from reweight.datasets.square_lattice import simulate_square_lattice
 
 import reweight as rw
+from reweight.datasets.exact import canonical, lattice_log_degeneracies
+from reweight.datasets.square_lattice import simulate_square_lattice
 from reweight.quantities.catalogue import available
 from reweight.quantities.moments import LOG_PARTITION
 from reweight.quantities.quantity import Scaling

@@ -10,11 +10,11 @@ import math
 
 import numpy as np
 import pytest
-from reweight.datasets.exact import lattice_log_degeneracies
-from reweight.datasets.sampling import draw_gamma, draw_levels
 
 import reweight as rw
 from reweight.answers.evaluate import evaluate
+from reweight.datasets.exact import lattice_log_degeneracies
+from reweight.datasets.sampling import draw_gamma, draw_levels
 
 SHAPE = 30.0
 

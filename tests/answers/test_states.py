@@ -11,13 +11,13 @@ import math
 
 import numpy as np
 import pytest
-from reweight.datasets.exact import lattice_log_degeneracies
-from reweight.datasets.exact_models import ladder_levels
-from reweight.datasets.sampling import draw_gamma, draw_gaussian, draw_levels
 from scipy.special import log_ndtr
 from scipy.stats import binom
 
 import reweight as rw
+from reweight.datasets.exact import lattice_log_degeneracies
+from reweight.datasets.exact_models import ladder_levels
+from reweight.datasets.sampling import draw_gamma, draw_gaussian, draw_levels
 from reweight.density_of_states import DensityOfStates, Description
 from reweight.estimate import Estimate
 from reweight.multistate import pairwise_start, solve

@@ -4,9 +4,9 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
-from reweight.datasets.sampling import draw_gamma
 
 import reweight as rw
+from reweight.datasets.sampling import draw_gamma
 
 TEMPERATURES = (1.0, 1.2, 1.45)
 ASKED = 1.3

@@ -18,12 +18,12 @@ from dataclasses import dataclass
 from pathlib import Path
 
 import numpy as np
-from reweight.datasets.exact import canonical, lattice_log_degeneracies
-from reweight.datasets.exact_models import ladder_levels, ring_levels
-from reweight.datasets.sampling import draw_gamma, draw_gaussian, draw_levels
 
 import reweight as rw
 from reweight.answers.evaluate import evaluate
+from reweight.datasets.exact import canonical, lattice_log_degeneracies
+from reweight.datasets.exact_models import ladder_levels, ring_levels
+from reweight.datasets.sampling import draw_gamma, draw_gaussian, draw_levels
 from reweight.uncertainty.intervals import half_width
 
 SEED = 20261201

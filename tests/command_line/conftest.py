@@ -8,6 +8,7 @@ from pathlib import Path
 
 import numpy as np
 import pytest
+
 from reweight.cli.application import main
 from reweight.datasets.sampling import draw_gamma
 

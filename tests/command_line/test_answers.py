@@ -8,9 +8,9 @@ import re
 
 import numpy as np
 import pytest
-from reweight.cli.application import main
 
 import reweight as rw
+from reweight.cli.application import main
 
 GAS_CONSTANT = 8.31446261815324e-3  # kJ/(mol K), exact by definition (SI 2019)
 SHAPE = 30.0  # of the Gamma-distributed energies in the study: C = SHAPE R, E = SHAPE R T

@@ -11,10 +11,10 @@ from typing import Any
 
 import numpy as np
 import pytest
-from reweight.datasets.exact import lattice_log_degeneracies
-from reweight.datasets.sampling import draw_levels
 
 import reweight as rw
+from reweight.datasets.exact import lattice_log_degeneracies
+from reweight.datasets.sampling import draw_levels
 
 HOSTILE_NAMES = ("=2+3", "+1", "-1", "@cmd", 'quote" , comma', "<script>alert(1)", "Ωμέγα", "<b>&amp;")
 

@@ -9,6 +9,7 @@ import math
 
 import numpy as np
 import pytest
+
 from reweight.datasets.exact import (
     canonical,
     heat_capacity_peak,

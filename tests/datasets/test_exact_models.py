@@ -7,6 +7,7 @@ Figures without a closed form in the test were computed in 40-digit arithmetic, 
 
 import numpy as np
 import pytest
+
 from reweight.datasets import exact_models
 from reweight.datasets.exact import canonical, canonical_mean, heat_capacity_peak
 

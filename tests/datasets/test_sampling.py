@@ -8,6 +8,7 @@ bars of everything else, without any assumption about the correlation.
 
 import numpy as np
 import pytest
+
 from reweight.datasets import exact_models, sampling
 from reweight.datasets.exact import canonical, canonical_mean, lattice_log_degeneracies
 

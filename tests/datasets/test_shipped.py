@@ -7,6 +7,7 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
+
 from reweight.datasets import SHIPPED, make, shipped
 from reweight.datasets.bead_chain import GAS_CONSTANT
 from reweight.datasets.exact import canonical, lattice_log_degeneracies

@@ -7,6 +7,7 @@ comparison), seeds are fixed.
 
 import numpy as np
 import pytest
+
 from reweight.datasets.bead_chain import GAS_CONSTANT, BeadChain, simulate_bead_chain
 from reweight.datasets.exact import canonical, canonical_mean
 from reweight.datasets.exact_models import lattice_joint_levels

@@ -9,8 +9,8 @@ states for L = 4: enumeration of all 65,536 states.
 import numpy as np
 import pytest
 from numpy.typing import NDArray
-from reweight.datasets.exact import lattice_log_degeneracies
 
+from reweight.datasets.exact import lattice_log_degeneracies
 from reweight.estimate import Estimate
 from reweight.multistate import Solution, pairwise_start, solve
 from reweight.quantities.heat_capacity import HeatCapacity

@@ -10,6 +10,8 @@ from dataclasses import dataclass
 
 import numpy as np
 import pytest
+
+import reweight as rw
 from reweight.datasets.exact_models import (
     Levels,
     ladder_levels,
@@ -18,8 +20,6 @@ from reweight.datasets.exact_models import (
     two_level_system,
 )
 from reweight.datasets.sampling import draw_levels
-
-import reweight as rw
 
 ROWS = 60_000
 AUTOREGRESSION = 0.8  # about one row in 9 is independent

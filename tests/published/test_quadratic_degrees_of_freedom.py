@@ -11,9 +11,9 @@ hundred or more degrees of freedom); seeds are fixed.
 import functools
 
 import numpy as np
-from reweight.datasets.sampling import draw_gamma
 
 import reweight as rw
+from reweight.datasets.sampling import draw_gamma
 
 DEGREES_OF_FREEDOM = 120
 SHAPE = DEGREES_OF_FREEDOM / 2

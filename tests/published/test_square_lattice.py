@@ -14,10 +14,10 @@ import functools
 
 import numpy as np
 import pytest
-from reweight.datasets.exact import lattice_log_degeneracies
-from reweight.datasets.sampling import draw_levels
 
 import reweight as rw
+from reweight.datasets.exact import lattice_log_degeneracies
+from reweight.datasets.sampling import draw_levels
 
 CRITICAL_TEMPERATURE = 2.269185314213022  # 2 / ln(1 + sqrt 2)
 

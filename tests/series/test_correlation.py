@@ -14,8 +14,8 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 from naive import group_means
 from naive import statistical_inefficiency as naive_inefficiency
-from reweight.datasets.sampling import correlated_normals
 
+from reweight.datasets.sampling import correlated_normals
 from reweight.series.correlation import autocovariance, shrink, statistical_inefficiency
 
 INEFFICIENCY = {0.0: 1.0, 0.5: 3.0, 0.8: 9.0, 0.9: 19.0, 0.95: 39.0, 0.99: 199.0}

@@ -4,8 +4,8 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
-from reweight.datasets.sampling import correlated_normals
 
+from reweight.datasets.sampling import correlated_normals
 from reweight.series.transient import transient_length
 
 LENGTH = 4000

@@ -17,13 +17,13 @@ from functools import cache
 import numpy as np
 import pytest
 from numpy.typing import NDArray
-from reweight.datasets.exact import canonical, heat_capacity_peak, lattice_log_degeneracies
-from reweight.datasets.exact_models import gamma_canonical
-from reweight.datasets.sampling import draw_gamma, draw_levels
 from scipy.stats import binomtest
 
 import reweight as rw
 from reweight.answers.evaluate import evaluate
+from reweight.datasets.exact import canonical, heat_capacity_peak, lattice_log_degeneracies
+from reweight.datasets.exact_models import gamma_canonical
+from reweight.datasets.sampling import draw_gamma, draw_levels
 from reweight.quantities.energy import MeanEnergy
 from reweight.quantities.heat_capacity import HeatCapacity
 from reweight.quantities.moments import Moments

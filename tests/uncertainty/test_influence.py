@@ -13,11 +13,11 @@ from collections.abc import Callable
 import numpy as np
 import pytest
 from numpy.typing import NDArray
-from reweight.datasets.exact import lattice_log_degeneracies
-from reweight.datasets.sampling import draw_levels
 
 import reweight as rw
 from reweight.answers.evaluate import evaluate
+from reweight.datasets.exact import lattice_log_degeneracies
+from reweight.datasets.sampling import draw_levels
 from reweight.estimate import Estimate
 from reweight.multistate import solve
 from reweight.quantities.catalogue import available

@@ -5,9 +5,9 @@ from __future__ import annotations
 import numpy as np
 import pytest
 from naive import block_variance
-from reweight.datasets.sampling import correlated_normals
 from scipy.stats import t as student
 
+from reweight.datasets.sampling import correlated_normals
 from reweight.errors import InputError
 from reweight.uncertainty.influence import centred
 from reweight.uncertainty.intervals import check_level, half_width
