@@ -109,7 +109,14 @@ def _write(file: Any, combined: DensityOfStates) -> None:
         _variable(group, "kept_rows", ("row", "column"), tally.tail)
         if tally.leaves is not None and tally.thinned is not None:
             _variable(group, "keys", ("key",), tally.leaves.keys)
-            _variable(group, "sums", ("tallied", "leaf", "order", "key"), tally.leaves.sums)
+            # Counts of levels shrink tenfold; other sums hardly, and would take longer to pack than to compute.
+            _variable(
+                group,
+                "sums",
+                ("tallied", "leaf", "order", "key"),
+                tally.leaves.sums,
+                packed=tally.nodes.discrete,
+            )
             _variable(group, "leaf_rows", ("leaf",), tally.leaves.rows)
             group.thinned_group = np.int64(tally.thinned.group)
             _variable(group, "thinned_origin", ("column",), tally.thinned.origin)
@@ -121,13 +128,14 @@ def _json(data: object) -> str:
     return json.dumps(data, sort_keys=True, ensure_ascii=False)
 
 
-def _variable(group: Any, name: str, dimensions: tuple[str, ...], values: NDArray[Any]) -> None:
+def _variable(
+    group: Any, name: str, dimensions: tuple[str, ...], values: NDArray[Any], *, packed: bool = False
+) -> None:
     for dimension, size in zip(dimensions, values.shape, strict=True):
         if dimension not in group.dimensions:
             group.createDimension(dimension, size)
-    variable = group.createVariable(
-        name, values.dtype.str[1:], dimensions, zlib=True, complevel=1, shuffle=True, fill_value=False
-    )
+    packing: dict[str, Any] = {"zlib": True, "complevel": 1, "shuffle": True} if packed else {}
+    variable = group.createVariable(name, values.dtype.str[1:], dimensions, fill_value=False, **packing)
     variable[...] = values
 
 

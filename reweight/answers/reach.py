@@ -96,9 +96,11 @@ def carriers(canonical: Canonical, influences: Influence) -> Array:
     for run, independent in zip(estimate.runs, estimate.independent_shares, strict=True):
         weights = run.total[0]
         here = phi[run.index]
-        squared = (here - weights @ here / weights.sum()) ** 2
-        second += independent * (weights @ squared)
-        fourth += independent * (weights @ squared**2)
+        here -= weights @ here / weights.sum()
+        here *= here
+        second += independent * (weights @ here)
+        here *= here
+        fourth += independent * (weights @ here)
     return np.divide(second**2, fourth, out=by_weight, where=fourth > 0)
 
 
