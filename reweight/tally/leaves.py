@@ -34,6 +34,7 @@ __all__ = [
     "leaf_length",
     "leaf_sums",
     "scattered_sums",
+    "without_empty_keys",
 ]
 
 MOST_LEAVES = 128
@@ -140,7 +141,7 @@ def leaf_sums(
     columns: Sequence[Column],
     observables: Sequence[str],
 ) -> LeafSums:
-    """Tally rows in leaves of ``length`` (a power of two); the last leaf may be short.
+    """Tally rows in leaves of ``length`` (a power of two); the last leaf may be short, and keys may be empty.
 
     Parameters
     ----------
@@ -173,24 +174,20 @@ def leaf_sums(
                     factor = weight[here] if factor is None else weight[here] * factor
                 filled[c, :, j] = np.bincount(place, factor, minlength=shape[0] * size).reshape(shape)
     sums = pairwise(sums, 1, doublings(length, unit))
-    occupied = np.flatnonzero(sums[0, :, 0].any(axis=0))
-    return LeafSums(
-        keys=keys[occupied],
-        sums=_kept(sums, occupied),
-        rows=_leaf_rows(count, length),
-    )
+    return LeafSums(keys=keys, sums=sums, rows=_leaf_rows(count, length))
 
 
-def _kept(sums: NDArray[np.float64], occupied: NDArray[np.int64]) -> NDArray[np.float64]:
-    """Sums of the occupied keys only, copied stretch by stretch: many times faster than key by key."""
-    if occupied.size == sums.shape[-1]:
-        return sums
-    kept = np.empty((*sums.shape[:-1], occupied.size))
+def without_empty_keys(leaves: LeafSums) -> LeafSums:
+    """Leaves without the keys that nothing fell on, copied stretch by stretch: faster than key by key."""
+    occupied = np.flatnonzero(leaves.sums[0, :, 0].any(axis=0))
+    if occupied.size == leaves.keys.size:
+        return leaves
+    kept = np.empty((*leaves.sums.shape[:-1], occupied.size))
     ends = np.flatnonzero(np.diff(occupied) > 1) + 1
     for start, stop in itertools.pairwise([0, *ends, occupied.size]):
         first = occupied[start]
-        kept[..., start:stop] = sums[..., first : first + stop - start]
-    return kept
+        kept[..., start:stop] = leaves.sums[..., first : first + stop - start]
+    return LeafSums(keys=leaves.keys[occupied], sums=kept, rows=leaves.rows)
 
 
 def _leaf_rows(count: int, length: int) -> NDArray[np.int64]:
@@ -251,9 +248,10 @@ def join_leaves(parts: Sequence[LeafSums]) -> LeafSums:
     start = 0
     for part in parts:
         here = sums[:, start : start + part.rows.size]
-        if part.keys.size == keys.size:  # the usual case, and many times faster than placing them one by one
-            here[...] = part.sums
+        place = np.searchsorted(keys, part.keys)
+        if place[-1] - place[0] < place.size:  # no gaps: the usual case, and many times faster
+            here[..., place[0] : place[-1] + 1] = part.sums
         else:
-            here[..., np.searchsorted(keys, part.keys)] = part.sums
+            here[..., place] = part.sums
         start += part.rows.size
     return LeafSums(keys=keys, sums=sums, rows=rows)

@@ -21,6 +21,7 @@ from reweight.tally.leaves import (
     leaf_length,
     leaf_sums,
     scattered_sums,
+    without_empty_keys,
 )
 from reweight.tally.levels import are_levels, pour
 from reweight.tally.nodes import Column, Nodes
@@ -167,12 +168,14 @@ class RunTally:
             length = leaf_length(tail.shape[0])
             most = max(DENSEST * tail.size, FEW_NUMBERS)
             wide = not self.nodes.discrete and not self._fits(tail, MOST_LEAVES, most)
-            sums = scattered_sums if wide else leaf_sums
-            leaves = sums(tail, length, self.nodes, self.columns, self.observables)
-            return leaves, thin(tail, max(1, length // GROUPS_A_LEAF), tail[0])
+            thinned = thin(tail, max(1, length // GROUPS_A_LEAF), tail[0])
+            if wide:
+                return scattered_sums(tail, length, self.nodes, self.columns, self.observables), thinned
+            leaves = leaf_sums(tail, length, self.nodes, self.columns, self.observables)
+            return without_empty_keys(leaves), thinned
         assert self.thinned is not None
         if tail.shape[0] == 0:
-            return self.leaves, self.thinned
+            return without_empty_keys(self.leaves), self.thinned
         length = int(self.leaves.rows[0])
         rest = leaf_sums(tail, length, self.nodes, self.columns, self.observables)
         more = thin(tail, self.thinned.group, self.thinned.origin)
@@ -182,4 +185,4 @@ class RunTally:
             sums=np.concatenate([self.thinned.sums, more.sums]),
             squares=np.concatenate([self.thinned.squares, more.squares]),
         )
-        return join_leaves([*self._parts, rest]), thinned
+        return without_empty_keys(join_leaves([*self._parts, rest])), thinned
