@@ -138,6 +138,10 @@ def tally_sources(
             )
         return tally
 
+    if (
+        workers == 1
+    ):  # a thread of its own would only cost: its memory is handed back to the system again and again
+        return list(map(read, sources, openings, streams))
     with ThreadPoolExecutor(max_workers=workers) as pool:
         return list(pool.map(read, sources, openings, streams))
 

@@ -38,6 +38,8 @@ GROWTH = [
 
 def tally_and_solve(samples: NDArray[np.float64], nodes: Nodes, workers: int = WORKERS) -> Estimate:
     """All runs, shape (K, N), to free energies."""
+    if workers == 1:
+        return solved([leaves_of(run, nodes) for run in samples])
     with ThreadPoolExecutor(workers) as pool:
         return solved(list(pool.map(lambda run: leaves_of(run, nodes), samples)))
 
