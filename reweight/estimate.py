@@ -213,12 +213,15 @@ class Canonical:
         """Energies of the nodes relative to the mean at each temperature, shape (Q, T)."""
         return np.asarray(self.estimate.energies[:, None] - self.mean_energy)
 
+    @cached_property
+    def _powers(self) -> list[Array]:
+        return [self.weights]
+
     def weighted_power(self, power: int) -> Array:
         """``r (E - <E>)**power`` at the nodes, shape (Q, T)."""
-        weighted = self.weights
-        for _ in range(power):
-            weighted = weighted * self.deviation
-        return weighted
+        while len(self._powers) <= power:
+            self._powers.append(self._powers[-1] * self.deviation)
+        return self._powers[power]
 
     def effective_sample_size(self) -> Array:
         """``1 / sum W r**2`` in independent samples, shape (T,) (Kish 1965, with the weights of the mixture)."""

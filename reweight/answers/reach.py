@@ -74,7 +74,7 @@ def end_mass(canonical: Canonical) -> Array:
     """Probability beyond the last ten independent samples at either end of the energies, shape (2, T)."""
     low, high = _end_nodes(canonical.estimate)
     weights = canonical.estimate.weights[0]
-    return np.array([(weights[end] @ canonical.weights[end]) for end in (low, high)])
+    return np.array([(weights * end) @ canonical.weights for end in (low, high)])
 
 
 def carriers(canonical: Canonical, influences: Influence) -> Array:
