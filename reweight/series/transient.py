@@ -18,7 +18,6 @@ __all__ = ["transient_length"]
 
 CANDIDATES = 60
 FEWEST_LEFT = 20
-LONGEST = 2**11  # entries examined; transients are rounded up to a leaf, at least 16 of these, anyway
 OUTLIER_RANGE = 10  # interquartile ranges of the second half
 
 
@@ -34,9 +33,6 @@ def transient_length(series: NDArray[np.float64]) -> int:
     int
         At most three quarters of the series; 0 for a constant one.
     """
-    if series.size > LONGEST:  # neighbours averaged: finer than the decision is needed, and many times faster
-        halved = series[: series.size // 2 * 2].reshape(-1, 2).mean(axis=1)
-        return 2 * transient_length(halved)
     count = series.size
     if count < 2 * FEWEST_LEFT:
         return 0
