@@ -15,7 +15,15 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.fft import irfft, next_fast_len, rfft
 
-__all__ = ["Inefficiency", "autocovariance", "shrink", "statistical_inefficiency", "window_length"]
+__all__ = [
+    "Inefficiency",
+    "autocovariance",
+    "is_constant",
+    "shrink",
+    "statistical_inefficiency",
+    "window_length",
+    "window_passes",
+]
 
 Array = NDArray[np.float64]
 
@@ -51,13 +59,22 @@ def autocovariance(series: Array) -> Array:
     return np.asarray(full[:count] / count)
 
 
+def window_passes(tau: Array, lag: NDArray[np.int64] | int, count: Array | int) -> NDArray[np.bool_]:
+    """Whether sums up to a lag, ``tau(L)``, are long enough by Wolff's condition for series of that many entries."""
+    tau = np.maximum(tau, 0.5 + 1e-9)
+    stretch = STRETCH / np.log((2 * tau + 1) / (2 * tau - 1))
+    return np.asarray(np.exp(-lag / stretch) - stretch / np.sqrt(lag * count) < 0)
+
+
 def window_length(cumulative: Array, count: int) -> int:
     """First window that satisfies Wolff's condition, given ``tau(L)`` for L = 1, 2, ...; the longest if none does."""
-    tau = np.maximum(cumulative, 0.5 + 1e-9)
-    stretch = STRETCH / np.log((2 * tau + 1) / (2 * tau - 1))
-    lag = np.arange(1, tau.size + 1)
-    passed = np.exp(-lag / stretch) - stretch / np.sqrt(lag * count) < 0
-    return int(np.argmax(passed)) + 1 if passed.any() else tau.size
+    passed = window_passes(cumulative, np.arange(1, cumulative.size + 1), count)
+    return int(np.argmax(passed)) + 1 if passed.any() else cumulative.size
+
+
+def is_constant(lowest: float, highest: float) -> bool:
+    """Whether entries between these two differ by no more than their rounding errors."""
+    return highest - lowest <= 1e-14 * max(abs(lowest), abs(highest))
 
 
 def statistical_inefficiency(series: Array, *, group: int = 1, within_variance: float = 0.0) -> Inefficiency:
@@ -80,8 +97,7 @@ def statistical_inefficiency(series: Array, *, group: int = 1, within_variance: 
     count = series.size
     covariance = autocovariance(series) if count > 1 else np.zeros(1)
     variance = float(covariance[0])
-    scale = float(np.abs(series).max()) if count else 0.0
-    if count < 4 or variance <= (1e-14 * scale) ** 2:
+    if count < 4 or is_constant(float(series.min()), float(series.max())):
         return Inefficiency(value=float(count * group), standard_error=0.0, window=0, constant=True)
     longest = max(1, count // 2)
     tau = 0.5 + np.cumsum(covariance[1 : longest + 1]) / variance

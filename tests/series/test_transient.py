@@ -6,7 +6,8 @@ import numpy as np
 import pytest
 
 from reweight.datasets.sampling import correlated_normals
-from reweight.series.transient import transient_length
+from reweight.series.correlation import statistical_inefficiency
+from reweight.series.transient import independent_samples, transient_length
 
 LENGTH = 4000
 
@@ -75,3 +76,34 @@ def test_a_start_that_never_ends_costs_at_most_three_quarters() -> None:
 def test_constant_and_short_series_lose_nothing() -> None:
     assert transient_length(np.full(1000, 3.7)) == 0
     assert transient_length(np.arange(39.0)) == 0
+
+
+@pytest.mark.parametrize("offset", [0.0, 1e3])
+@pytest.mark.parametrize("coefficient", [0.0, 0.9, 0.99, 0.9999])
+@pytest.mark.parametrize("length", [44, 1000, 8192])
+def test_all_starts_at_once_count_as_each_start_by_itself(
+    length: int, coefficient: float, offset: float
+) -> None:
+    rng = np.random.default_rng(12)
+    series = offset + correlated_normals(length, coefficient, rng) + 20 * np.exp(-np.arange(length) / 30)
+    starts = np.unique(np.geomspace(1, length - 20, 25).astype(int)) - 1
+
+    one_by_one = [(length - start) / statistical_inefficiency(series[start:]).value for start in starts]
+
+    np.testing.assert_allclose(independent_samples(series, starts), one_by_one, rtol=1e-9)
+
+
+def test_a_constant_rest_is_one_sample() -> None:
+    series = np.concatenate([np.arange(30.0), np.full(100, 7.0)])
+
+    assert independent_samples(series, np.array([0, 30, 60]))[1:].tolist() == [1.0, 1.0]
+
+
+def test_what_is_far_quieter_than_the_start_is_measured_by_itself() -> None:
+    rng = np.random.default_rng(13)
+    series = np.concatenate([1e9 * rng.standard_normal(100), correlated_normals(400, 0.8, rng)])
+    starts = np.array([0, 100, 200])
+
+    one_by_one = [(500 - start) / statistical_inefficiency(series[start:]).value for start in starts]
+
+    np.testing.assert_allclose(independent_samples(series, starts), one_by_one, rtol=1e-9)
