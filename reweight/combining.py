@@ -19,6 +19,7 @@ from numpy.typing import NDArray
 from reweight.density_of_states import Decision, DensityOfStates, Description, LeftOut, RunRecord
 from reweight.errors import DisconnectedError, InputError, TooShortError
 from reweight.estimate import Estimate
+from reweight.memory import keep_freed_memory
 from reweight.multistate import Solution, cut_sharing, pairwise_start, solution_at, solve
 from reweight.runs import Source
 from reweight.series.correlation import Inefficiency, shrink, statistical_inefficiency
@@ -117,6 +118,7 @@ def tally_sources(
     """
     if not sources:
         raise InputError("a study must have at least one run in use; got none.")
+    keep_freed_memory()
     streams = [source.chunks() for source in sources]
     openings = [_opening(stream) for stream in streams]
     nodes = _nodes([opening[:, 0] for opening in openings], np.array([s.beta for s in sources]), description)

@@ -27,6 +27,7 @@ from reweight.multistate import (
     reference_run,
     solve_reduced,
 )
+from reweight.products import product
 from reweight.tally.assemble import Assembly, Matrix
 from reweight.tally.nodes import Column
 
@@ -117,10 +118,9 @@ class Estimate:
         solver : callable
             Solution from the weights (K, Q) of each run, their sums (K,), inverse temperatures and node energies.
         """
-        nodes = assembly.energies.size
-        weights = np.zeros((len(columns), nodes))
-        independent = np.zeros(nodes)
-        per_run = np.zeros((beta.size, nodes))
+        keys, order = assembly.keys.size, assembly.order
+        weights = np.zeros((len(columns), keys, order))
+        per_run = np.zeros((beta.size, keys, order))
         shares = weighting / inefficiencies
         runs = []
         for i, run in enumerate(assembly.runs):
@@ -130,19 +130,19 @@ class Estimate:
             total = assembly.node_weights(summed) / weighting[i]
             index = assembly.nodes_at(run.place)
             runs.append(RunLeaves(index, run.place, kept, float(weighting[i]), counts, total))
-            weights[:, index] += total
-            independent[index] += total[0] * shares[i]
-            per_run[i, index] = total[0]
+            weights[:, run.place] += total.reshape(len(columns), -1, order)
+            per_run[i, run.place] = total[0].reshape(-1, order)
         counts = np.array([run.counts.sum() for run in runs])
-        solution = solver(per_run, counts, beta, assembly.energies)
+        by_run = per_run.reshape(beta.size, -1)
+        solution = solver(by_run, counts, beta, assembly.energies)
         return cls(
             assembly=assembly,
             columns=tuple(columns),
             beta=beta,
             runs=tuple(runs),
             counts=counts,
-            weights=weights,
-            independent=independent,
+            weights=weights.reshape(len(columns), -1),
+            independent=product(shares[None, :], by_run)[0],
             independent_shares=shares,
             solution=solution,
         )

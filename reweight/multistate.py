@@ -28,16 +28,15 @@ Shape letters: K runs, Q nodes.
 from __future__ import annotations
 
 from dataclasses import dataclass
-from itertools import pairwise
 
 import numpy as np
 from numpy.typing import NDArray
 from scipy.linalg import cho_factor, cho_solve
-from scipy.optimize import brentq
 from scipy.special import expit
 
 from reweight.errors import ConvergenceError
 from reweight.products import COLUMNS, product
+from reweight.tally.panels import ORDER
 
 __all__ = ["Solution", "cut_sharing", "pairwise_start", "solution_at", "solve"]
 
@@ -47,6 +46,9 @@ LARGEST_STEP = 50.0
 DECREMENT = 1e-6
 MOST_STEPS = 100
 START = 1e-2  # how well starting values are solved for; Newton does the rest
+POOLED = 256  # nodes they are solved for on
+LONGEST_SEARCH = 1e15
+TINY = 1e-300
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -77,7 +79,7 @@ class Solution:
 
 
 def pairwise_start(weights: Array, counts: Array, beta: Array, energies: Array) -> Array:
-    """Free energies chained from exact two-run solutions of neighbouring temperatures.
+    """Free energies chained from two-run solutions of neighbouring temperatures, by bracketed Newton steps.
 
     Parameters
     ----------
@@ -86,28 +88,43 @@ def pairwise_start(weights: Array, counts: Array, beta: Array, energies: Array) 
     counts, beta : numpy.ndarray, shape (K,)
     energies : numpy.ndarray, shape (Q,)
     """
+    weights, energies = _pooled(weights, energies)
     order = np.argsort(beta, kind="stable")
-    free = np.zeros(beta.size)
-    for a, b in pairwise(order):
-        seen = (weights[a] != 0) | (weights[b] != 0)
-        pair, energy = weights[a, seen] + weights[b, seen], energies[seen]
-        step = beta[b] - beta[a]
-        offset = np.log(counts[b] / counts[a]) - step * energy
-        target = counts[b]
+    low, high = order[:-1], order[1:]
+    pair, target = weights[low] + weights[high], counts[high]
+    step = beta[high] - beta[low]
+    offset = np.log(target / counts[low])[:, None] - step[:, None] * energies
+    mean = weights @ energies / counts
+    difference = step * 0.5 * (mean[low] + mean[high])
+    below, above = np.full(step.size, -np.inf), np.full(step.size, np.inf)
+    longest = 1.0
+    while longest < LONGEST_SEARCH:
+        share = expit(difference[:, None] + offset)
+        excess = (pair * share).sum(axis=1) - target
+        slope = (pair * share * (1 - share)).sum(axis=1)
+        below, above = np.where(excess <= 0, difference, below), np.where(excess >= 0, difference, above)
+        move = -excess / np.maximum(slope, np.abs(excess) / longest + TINY)
+        moved = difference + move
+        outside = (moved < below) | (moved > above)
+        difference = np.where(outside, 0.5 * (below + above), moved)
+        if np.abs(move).max(initial=0.0) < START:
+            free = np.zeros(beta.size)
+            free[high] = np.cumsum(difference)
+            return free
+        longest *= 2
+    raise ConvergenceError(
+        "two neighbouring runs could not be joined: their energies exceed double precision"
+    )
 
-        def excess(d: float, pair: Array = pair, offset: Array = offset, target: float = target) -> float:
-            return float(pair @ expit(d + offset)) - target
 
-        middle = step * 0.5 * (weights[a] @ energies / counts[a] + weights[b] @ energies / counts[b])
-        reach = 0.1
-        while excess(middle - reach) > 0 or excess(middle + reach) < 0:
-            reach *= 4
-            if reach > 1e12:
-                raise ConvergenceError(
-                    "two neighbouring runs could not be joined: their energies exceed double precision"
-                )
-        free[b] = free[a] + brentq(excess, middle - reach, middle + reach, xtol=START)
-    return free
+def _pooled(weights: Array, energies: Array) -> tuple[Array, Array]:
+    """Neighbouring nodes as one: good enough for starting values.  Whole panels, since single nodes mean nothing."""
+    group = ORDER * -(-energies.size // (ORDER * POOLED))
+    if energies.size <= POOLED:
+        return weights, energies
+    starts = np.arange(0, energies.size, group)
+    sizes = np.diff(np.append(starts, energies.size))
+    return np.add.reduceat(weights, starts, axis=1), np.add.reduceat(energies, starts) / sizes
 
 
 def _exponents(counts: Array, beta: Array, energies: Array) -> Array:

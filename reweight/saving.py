@@ -24,6 +24,7 @@ from reweight.density_of_states import Decision, DensityOfStates, Description, L
 from reweight.errors import CombinedFileError
 from reweight.estimate import Estimate
 from reweight.files import replacing
+from reweight.memory import keep_freed_memory
 from reweight.multistate import solution_at
 from reweight.reading.netcdf import NETCDF_LOCK
 from reweight.series.correlation import Inefficiency
@@ -149,6 +150,7 @@ def open_combined(path: str | os.PathLike[str]) -> DensityOfStates:
     """
     import netCDF4
 
+    keep_freed_memory()
     name = os.fspath(path)
     if not Path(path).is_file():
         raise CombinedFileError(

@@ -23,7 +23,7 @@ LONGEST = 400
 # Lowest first; entries of one row do not import each other.
 ROWS: tuple[tuple[str, ...], ...] = (
     ("errors", "version"),
-    ("units", "files", "notation", "products"),
+    ("units", "files", "notation", "memory", "products"),
     ("labels",),
     ("study",),
     ("reading",),
@@ -48,7 +48,7 @@ ROWS: tuple[tuple[str, ...], ...] = (
 )
 RANK = {name: rank for rank, row in enumerate(ROWS) for name in row}
 
-ARRAY_LAYER = ("products", "series", "tally", "multistate", "estimate", "quantities", "uncertainty")
+ARRAY_LAYER = ("memory", "products", "series", "tally", "multistate", "estimate", "quantities", "uncertainty")
 ARRAY_LAYER_IMPORTS = {"numpy", "scipy", "reweight"}
 ARRAY_LAYER_KNOWS = {"errors", *ARRAY_LAYER}  # of this package
 

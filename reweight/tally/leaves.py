@@ -43,7 +43,7 @@ STRIDE = 2**14  # rows handled at a time: what belongs to them stays near the pr
 # Panels numbered without gaps from the lowest to the highest; beyond so many, that could cost any amount of memory.
 CONTIGUOUS = 4096
 
-Locate = Callable[[slice], tuple[NDArray[np.int64], NDArray[np.float64]]]
+Locate = Callable[[slice, NDArray[np.int64]], tuple[NDArray[np.int64], NDArray[np.float64]]]
 
 
 @dataclass(slots=True)
@@ -105,23 +105,23 @@ def _span(energies: NDArray[np.float64], width: float) -> tuple[int, int]:
 
 
 def _placed(energies: NDArray[np.float64], nodes: Nodes) -> tuple[NDArray[Any], Locate]:
-    """Keys that may be present, and a function from a slice of the rows to their places and local coordinates."""
+    """Keys that may be present; a function from rows and what to add to places, to places and local coordinates."""
     if nodes.discrete:
         keys = np.unique(energies)
-        return keys, lambda here: (np.searchsorted(keys, energies[here]), energies[here])
+        return keys, lambda here, offsets: (np.searchsorted(keys, energies[here]) + offsets, energies[here])
     lowest, highest = _span(energies, nodes.width)
     if highest - lowest < CONTIGUOUS:
 
-        def locate(here: slice) -> tuple[NDArray[np.int64], NDArray[np.float64]]:
+        def locate(here: slice, offsets: NDArray[np.int64]) -> tuple[NDArray[np.int64], NDArray[np.float64]]:
             index, coordinate = panel_indices(energies[here], nodes.width)
-            place = index.astype(np.int64)
-            place -= lowest
-            return place, coordinate
+            index -= lowest
+            index += offsets
+            return index.astype(np.int64), coordinate
 
         return np.arange(lowest, highest + 1), locate
     index, coordinate = panel_indices(energies, nodes.width)
     keys, place = np.unique(index.astype(np.int64), return_inverse=True)
-    return keys, lambda here: (place[here], coordinate[here])
+    return keys, lambda here, offsets: (place[here] + offsets, coordinate[here])
 
 
 def column_values(
@@ -155,15 +155,14 @@ def leaf_sums(
     size, order = keys.size, nodes.order
     unit = min(length, STRIDE)
     longest = min(count, STRIDE)
-    buffer = np.ones((order, longest))
+    buffer = np.empty((order, longest))  # the first row is never used: no factor is faster than ones
     offsets = np.repeat(np.arange(-(-longest // unit)) * size, unit)[:longest]
     sums = np.empty((len(columns), leaf_count * (length // unit), order, size))
     sums[:, -(-count // unit) :] = 0
     for start in range(0, count, STRIDE):
         here = slice(start, min(start + STRIDE, count))
-        place, coordinate = locate(here)
-        number = place.size
-        place += offsets[:number]
+        number = here.stop - start
+        place, coordinate = locate(here, offsets[:number])
         values = powers(coordinate, order, out=buffer[:, :number])
         filled = sums[:, start // unit : -(-here.stop // unit)]
         shape = (filled.shape[1], size)

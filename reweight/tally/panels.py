@@ -101,7 +101,7 @@ def panel_indices(
 def powers(
     coordinate: NDArray[np.float64], order: int = ORDER, *, out: NDArray[np.float64] | None = None
 ) -> NDArray[np.float64]:
-    """Powers 0 .. order-1 of a coordinate, shape (order, N); into ``out``, whose first row is ones, if given."""
+    """Powers 0 .. order-1 of a coordinate, shape (order, N); into ``out``, whose first row is left as it is, if given."""
     values = np.ones((order, coordinate.size)) if out is None else out
     if order > 1:
         values[1] = coordinate

@@ -6,6 +6,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from reweight.estimate import Estimate
+from reweight.memory import keep_freed_memory
 from reweight.multistate import Solution, pairwise_start, solve
 from reweight.tally.assemble import assemble
 from reweight.tally.leaves import LeafSums, ScatteredSums
@@ -16,6 +17,8 @@ from reweight.tally.run_tally import RunTally
 __all__ = ["energies", "leaves_of", "nodes_for", "solved", "temperatures"]
 
 SHAPE = 100.0
+
+keep_freed_memory()  # as `combine` does
 
 Array = NDArray[np.float64]
 
