@@ -34,6 +34,7 @@ from reweight.tally.nodes import Column
 __all__ = ["Canonical", "Estimate", "RunLeaves"]
 
 Array = NDArray[np.float64]
+Places = slice | NDArray[np.int64]
 
 
 @dataclass(frozen=True, slots=True)
@@ -42,9 +43,9 @@ class RunLeaves:
 
     Attributes
     ----------
-    index : numpy.ndarray, shape (q,)
-        Places of the run's nodes among all nodes.
-    place : numpy.ndarray, shape (M,)
+    index : slice, or numpy.ndarray of shape (q,)
+        Places of the run's nodes among all nodes: a slice where they follow one another, as they usually do.
+    place : slice, or numpy.ndarray of shape (M,)
         Places of its keys among all keys.
     sums : tuple of arrays, length C, shape (B, q)
         Sums on keys, in samples: shared with the assembly, since a copy would be as large as everything else together.
@@ -56,8 +57,8 @@ class RunLeaves:
         Weight on each node, all leaves together.
     """
 
-    index: NDArray[np.int64]
-    place: NDArray[np.int64]
+    index: Places
+    place: Places
     sums: tuple[Matrix, ...]
     weighting: float
     counts: Array
@@ -128,10 +129,11 @@ class Estimate:
             counts = run.rows[first_leaves[i] :] / weighting[i]
             summed = np.array([np.asarray(column.sum(axis=0)).ravel() for column in kept])
             total = assembly.node_weights(summed) / weighting[i]
-            index = assembly.nodes_at(run.place)
-            runs.append(RunLeaves(index, run.place, kept, float(weighting[i]), counts, total))
-            weights[:, run.place] += total.reshape(len(columns), -1, order)
-            per_run[i, run.place] = total[0].reshape(-1, order)
+            place = _unbroken(run.place)
+            index = _unbroken(assembly.nodes_at(run.place))
+            runs.append(RunLeaves(index, place, kept, float(weighting[i]), counts, total))
+            weights[:, place] += total.reshape(len(columns), -1, order)
+            per_run[i, place] = total[0].reshape(-1, order)
         counts = np.array([run.counts.sum() for run in runs])
         by_run = per_run.reshape(beta.size, -1)
         solution = solver(by_run, counts, beta, assembly.energies)
@@ -186,6 +188,13 @@ class Estimate:
         )
 
 
+def _unbroken(places: NDArray[np.int64]) -> Places:
+    """Ascending places as a slice if none is left out: what is taken from an array then needs no copy."""
+    if places.size and places[-1] - places[0] == places.size - 1:
+        return slice(int(places[0]), int(places[-1]) + 1)
+    return places
+
+
 @dataclass(frozen=True, eq=False)
 class Canonical:
     """Canonical weights of the nodes at several temperatures.
@@ -223,6 +232,17 @@ class Canonical:
             self._powers.append(self._powers[-1] * self.deviation)
         return self._powers[power]
 
+    @cached_property
+    def _squares(self) -> Array:
+        return np.asarray(self.weights**2)
+
     def effective_sample_size(self) -> Array:
         """``1 / sum W r**2`` in independent samples, shape (T,) (Kish 1965, with the weights of the mixture)."""
-        return np.asarray(1 / (self.estimate.weights[0] @ self.weights**2))
+        return np.asarray(1 / (self.estimate.weights[0] @ self._squares))
+
+    @cached_property
+    def carriers(self) -> Array:
+        """``(sum W r**2)**2 / sum W r**4``: independent samples that carry the weights' variance, shape (T,)."""
+        second = self.estimate.independent @ self._squares
+        fourth = self.estimate.independent @ self._squares**2
+        return np.divide(second**2, fourth, out=np.zeros_like(second), where=fourth > 0)

@@ -17,7 +17,7 @@ from scipy.sparse import csr_array
 __all__ = ["COLUMNS", "product"]
 
 LARGEST = 2**18  # multiplications at a time; OpenBLAS starts a second thread at twice as many (measured)
-ROWS = 32
+ROWS = 32  # at a time, at least
 COLUMNS = 16  # right-hand sides that triangular solvers still treat on one thread (measured)
 
 
@@ -37,11 +37,12 @@ def product(left: NDArray[np.float64] | csr_array, right: NDArray[np.float64]) -
         return np.asarray(left @ right)
     height, (inner, width) = left.shape[0], right.shape
     result = np.empty((height, width))
-    for top in range(0, height, ROWS):
-        rows = left[top : top + ROWS]
+    together = max(ROWS, LARGEST // max(1, inner * width))
+    for top in range(0, height, together):
+        rows = left[top : top + together]
         step = max(1, LARGEST // (rows.shape[0] * width))
         total = rows[:, :step] @ right[:step]
         for start in range(step, inner, step):
             total += rows[:, start : start + step] @ right[start : start + step]
-        result[top : top + ROWS] = total
+        result[top : top + together] = total
     return result

@@ -84,24 +84,20 @@ def carriers(canonical: Canonical, influences: Influence) -> Array:
     the influence where that will not do: for an observable, whose own fourth moment is not tallied, and where no
     sample moves the answer (the heat capacity at infinite temperature is 0 whatever was sampled).
     """
-    estimate = canonical.estimate
-    second = estimate.independent @ canonical.weights**2
-    fourth = estimate.independent @ canonical.weights**4
-    by_weight = np.divide(second**2, fourth, out=np.zeros_like(second), where=fourth > 0)
     if set(influences.columns) != {COUNT}:
-        return by_weight
+        return canonical.carriers
+    estimate = canonical.estimate
     second = np.zeros_like(canonical.beta)
     fourth = np.zeros_like(canonical.beta)
     phi = influences.columns[COUNT]
     for run, independent in zip(estimate.runs, estimate.independent_shares, strict=True):
         weights = run.total[0]
-        here = phi[run.index]
-        here -= weights @ here / weights.sum()
-        here *= here
-        second += independent * (weights @ here)
-        here *= here
-        fourth += independent * (weights @ here)
-    return np.divide(second**2, fourth, out=by_weight, where=fourth > 0)
+        power = phi[run.index] - weights @ phi[run.index] / weights.sum()
+        power *= power
+        second += independent * (weights @ power)
+        power *= power
+        fourth += independent * (weights @ power)
+    return np.divide(second**2, fourth, out=canonical.carriers.copy(), where=fourth > 0)
 
 
 def supported(quantity: Quantity, ends: Array, carrying: Array) -> NDArray[np.bool_]:

@@ -119,7 +119,7 @@ def assert_influence(
             more = ask(with_added_weight(combined, run, node, WEIGHT, column))
             less = ask(with_added_weight(combined, run, node, -WEIGHT, column))
             found = (more - less) / (2 * WEIGHT)
-            worst = max(worst, float((np.abs(found - claimed[estimate.runs[run].index[node]]) / rms).max()))
+            worst = max(worst, float((np.abs(found - claimed[estimate.runs[run].index][node]) / rms).max()))
     assert worst < AGREEMENT
     return worst
 
@@ -245,7 +245,7 @@ def test_a_sample_that_is_counted_moves_the_answer_by_its_influence_up_to_a_cons
         return quantity.value(Moments(changed.estimate.canonical(BETA), 1.0))
 
     excess = [
-        (ask(node, WEIGHT) - ask(node, -WEIGHT)) / (2 * WEIGHT) - claimed[estimate.runs[run].index[node]]
+        (ask(node, WEIGHT) - ask(node, -WEIGHT)) / (2 * WEIGHT) - claimed[estimate.runs[run].index][node]
         for node in nodes_to_try(combined, run)
     ]
     rms = np.sqrt(estimate.weights[0] @ claimed**2 / estimate.weights[0].sum())
