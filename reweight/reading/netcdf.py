@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import threading
 from collections.abc import Iterator, Mapping, Sequence
+from concurrent.futures import ThreadPoolExecutor
 from pathlib import Path
 from typing import Any
 
@@ -63,7 +64,8 @@ class NetcdfTable:
         """Read columns from the first row to the last; see :class:`reweight.reading.source.Table`."""
         names = [self._names[column] for column in columns]
         size = self.path.stat().st_size
-        with _Opened(self.path) as dataset:
+        with ThreadPoolExecutor(max_workers=1) as beside, _Opened(self.path) as dataset:
+            digest = beside.submit(hash_file, self.path)
             with NETCDF_LOCK:
                 every = _columns(dataset)
                 variables = [every[name] for name in names]
@@ -76,8 +78,8 @@ class NetcdfTable:
                     chunk[:, place] = self._slice(name, variable, start, stop)
                 ledger.rows_read += len(chunk)
                 yield chunk
+            ledger.sha256 = digest.result()
         ledger.size = size
-        ledger.sha256 = hash_file(self.path)
 
     def _common_length(self, names: Sequence[str], variables: Sequence[Any]) -> int:
         dimensions = {variable.get_dims()[0].name: len(variable.get_dims()[0]) for variable in variables}
@@ -121,7 +123,9 @@ class NetcdfTable:
                 unit="row",
             ) from error
         numbers = np.asarray(values.data, dtype=np.float64)
-        bad = np.ma.getmaskarray(values) | ~np.isfinite(numbers)
+        bad = ~np.isfinite(numbers)
+        if np.ma.is_masked(values):
+            bad |= np.ma.getmaskarray(values)
         if bad.any():
             index = int(np.argmax(bad))
             found = "a missing value" if np.ma.getmaskarray(values)[index] else str(numbers[index])

@@ -15,6 +15,7 @@ M keys (panels or levels), p order (nodes a panel; 1 for levels), P pairs of a l
 from __future__ import annotations
 
 import itertools
+import math
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from typing import Any
@@ -98,10 +99,9 @@ def leaf_length(rows: int) -> int:
 
 def _span(energies: NDArray[np.float64], width: float) -> tuple[int, int]:
     """Lowest and highest panel visited."""
-    ends = np.array([energies.min(), energies.max()])
-    check_magnitude(ends[0], ends[1], width)
-    lowest, highest = np.floor(ends / width)
-    return int(lowest), int(highest)
+    lowest, highest = float(energies.min()), float(energies.max())
+    check_magnitude(lowest, highest, width)
+    return math.floor(lowest / width), math.floor(highest / width)
 
 
 def _placed(energies: NDArray[np.float64], nodes: Nodes) -> tuple[NDArray[Any], Locate]:
@@ -178,11 +178,11 @@ def leaf_sums(
 
 def without_empty_keys(leaves: LeafSums) -> LeafSums:
     """Leaves without the keys that nothing fell on, copied stretch by stretch: faster than key by key."""
-    occupied = np.flatnonzero(leaves.sums[0, :, 0].any(axis=0))
+    occupied = np.flatnonzero(leaves.sums[0, :, 0].sum(axis=0))
     if occupied.size == leaves.keys.size:
         return leaves
     kept = np.empty((*leaves.sums.shape[:-1], occupied.size))
-    ends = np.flatnonzero(np.diff(occupied) > 1) + 1
+    ends = np.flatnonzero(occupied[1:] - occupied[:-1] > 1) + 1
     for start, stop in itertools.pairwise([0, *ends, occupied.size]):
         first = occupied[start]
         kept[..., start:stop] = leaves.sums[..., first : first + stop - start]

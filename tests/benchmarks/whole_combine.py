@@ -1,7 +1,7 @@
 """The whole of ``combine`` from NetCDF, itemised, against a bare read: ``python whole_combine.py [REPETITIONS]``.
 
-32 files of 1,000,000 energies.  Items are timed one after the other on one thread; the whole is the product as it is,
-with two workers.
+32 files of 1,000,000 energies.  Items are timed one after the other on one thread; the whole is the product as it is:
+a file is hashed while it is read.
 """
 
 from __future__ import annotations
