@@ -13,6 +13,7 @@ from collections.abc import Sequence
 import click
 
 from reweight.cli.combine import combine
+from reweight.cli.crossing import crossing
 from reweight.cli.curve import curve
 from reweight.cli.demo import demo
 from reweight.cli.distribution import distribution
@@ -29,7 +30,7 @@ __all__ = ["application", "main"]
 SECTIONS = {
     "Bring data in": (runs,),
     "Combine": (combine,),
-    "Ask": (show, curve, peak, distribution, states),
+    "Ask": (show, curve, peak, crossing, distribution, states),
     "Learn": (demo, explain),
 }
 

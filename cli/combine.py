@@ -136,9 +136,7 @@ def _runs_to_show(combined: DensityOfStates, concerns: list[Finding]) -> list[in
 
 
 def _in_short(combined: DensityOfStates, prefix: str) -> str:
-    slowest = max(
-        range(len(combined.runs)), key=lambda place: combined.runs[place].decision.inefficiency.value
-    )
+    slowest = max(range(len(combined.runs)), key=lambda place: combined.runs[place].inefficiency.value)
     fewest = min(combined.runs, key=lambda run: run.independent_samples)
     text = (
         f"{prefix}{screen.counted(len(combined.runs), 'run')}; slowest {combined.runs[slowest].name}, "
@@ -161,6 +159,7 @@ def _account(combined: DensityOfStates) -> str:
     text = f"{screen.counted(read, 'row')} read from {screen.counted(len(files), 'file')}"
     text += f": {kept:,} kept, {transient:,} transient"
     text += f", {replaced:,} replaced, {dropped:,} dropped" if replaced or dropped else ", none dropped"
+    text += "; one common start for the replica exchange" if combined.description.exchange else ""
     for each in combined.left_out:
         text += f"\nleft out: {each.name} ({each.reason})"
     spacings = {run.tally.nodes.spacing for run in combined.runs} - {None}
@@ -175,8 +174,8 @@ def _account(combined: DensityOfStates) -> str:
 
 def _headline(combined: DensityOfStates) -> list[str]:
     """Lines with the reach and the peak of the heat capacity."""
-    from reweight.answers.curve import common_reach
     from reweight.answers.peak import peaks
+    from reweight.answers.support import common_reach
     from reweight.errors import OutOfReachError
     from reweight.notation import within as inside
 

@@ -13,11 +13,13 @@ __all__ = [
     "bin_option",
     "flattened",
     "level_option",
+    "linear_question_options",
     "output_options",
     "plain_path",
     "question_options",
     "range_options",
     "single_temperatures",
+    "table_options",
 ]
 
 Command = TypeVar("Command", bound=Callable[..., Any])
@@ -51,6 +53,16 @@ def _apply(command: Command, *options: Callable[[Command], Command]) -> Command:
 single_temperatures = click.option(
     "--at", type=Numbers(), multiple=True, help="Temperatures; repeatable, or parted by commas."
 )
+per_count_option = click.option(
+    "--per-count", is_flag=True, help="Answers per particle or site, as the study counts them."
+)
+energy_unit_option = click.option(
+    "--energy-unit", metavar="UNIT", help="Unit of energies in the answers.  [default: the study's]"
+)
+beyond_reach_option = click.option(
+    "--beyond-reach", is_flag=True, help="Answer where the runs do not support it, too; marked."
+)
+csv_option = click.option("--csv", type=plain_path, metavar="FILE", help="Write a table with all digits.")
 level_option = click.option(
     "--level", type=float, default=0.95, show_default=True, help="Level of confidence intervals."
 )
@@ -95,41 +107,45 @@ def question_options(command: Command) -> Command:
     """How an answer is to be given."""
     return _apply(
         command,
-        click.option(
-            "--per-count", is_flag=True, help="Answers per particle or site, as the study counts them."
-        ),
-        click.option(
-            "--energy-unit", metavar="UNIT", help="Unit of energies in the answers.  [default: the study's]"
-        ),
+        per_count_option,
+        energy_unit_option,
         level_option,
         click.option(
             "--errors",
             type=click.Choice(["linear", "bootstrap"]),
             default="linear",
             show_default=True,
-            callback=_only_linear,
-            help="How error bars are made (bootstrap: not built yet).",
+            help="Intervals by linear response, or with the shape that resampling in blocks shows.",
         ),
         click.option(
-            "--beyond-reach", is_flag=True, help="Answer where the runs do not support it, too; marked."
+            "--resamples", type=int, default=1000, show_default=True, help="Resamples for bootstrap errors."
         ),
+        click.option("--seed", type=int, default=0, show_default=True, help="Of the resamples."),
+        beyond_reach_option,
     )
 
 
-def _only_linear(ctx: click.Context, param: click.Parameter, value: str) -> str:
-    if value != "linear":
-        raise click.BadParameter(
-            "'bootstrap' is known but this version cannot use it yet; use linear.", ctx, param
-        )
-    return value
+def linear_question_options(command: Command) -> Command:
+    """How an answer is to be given whose errors come from linear response alone."""
+    return _apply(command, per_count_option, energy_unit_option, level_option, beyond_reach_option)
 
 
 def output_options(command: Command) -> Command:
     """Where an answer goes."""
+    picture = click.option(
+        "--plot", type=plain_path, metavar="FILE", help="Draw a picture: .pdf, .png or .svg."
+    )
+    return csv_option(picture(_printing_options(command)))
+
+
+def table_options(command: Command) -> Command:
+    """Where an answer goes that has no picture."""
+    return csv_option(_printing_options(command))
+
+
+def _printing_options(command: Command) -> Command:
     return _apply(
         command,
-        click.option("--csv", type=plain_path, metavar="FILE", help="Write a table with all digits."),
-        click.option("--plot", type=plain_path, metavar="FILE", help="Draw a picture: .pdf, .png or .svg."),
         click.option("--json", "as_json", is_flag=True, help="Print JSON in place of the table."),
         click.option("--force", is_flag=True, help="Replace files that exist."),
         click.option("--quiet", is_flag=True, help="No messages beside the answer."),

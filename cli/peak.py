@@ -12,6 +12,7 @@ from reweight.cli import options, screen
 if TYPE_CHECKING:
     from reweight.answers.peak import Peak
     from reweight.density_of_states import DensityOfStates
+    from reweight.uncertainty.resampling import Resamples
 
 __all__ = ["describe_extension", "describe_peak", "peak"]
 
@@ -31,6 +32,8 @@ def peak(
     energy_unit: str | None,
     level: float,
     errors: str,
+    resamples: int,
+    seed: int,
     beyond_reach: bool,
     csv: Path | None,
     plot: Path | None,
@@ -46,7 +49,16 @@ def peak(
 
     combined = screen.opened(file, quiet=quiet)
     asked = {"per_count": per_count, "energy_unit": energy_unit, "level": level, "beyond_reach": beyond_reach}
-    found = peaks(combined, of=of, lowest=lowest, highest=highest, **asked)  # type: ignore[arg-type]
+    drawn = _drawn(combined, resamples, seed, needed=errors == "bootstrap", quiet=quiet)
+    found = peaks(
+        combined,
+        of=of,
+        lowest=lowest,
+        highest=highest,
+        resamples=drawn,
+        resampled_intervals=errors == "bootstrap",
+        **asked,  # type: ignore[arg-type]
+    )
     if csv is not None:
         units = (combined.description.temperature_label or "1", found[0].unit)
         records = [_flat(each, *units) for each in found]
@@ -64,9 +76,26 @@ def peak(
     if as_json:
         units = {"temperature": combined.description.temperature_label or "1", "height": found[0].unit}
         records = [_record(each) for each in found]
-        screen.print_json(screen.envelope(combined, "peak", level=level, units=units, peaks=records))
+        content = {"resamples": None if drawn is None else drawn.count, "units": units, "peaks": records}
+        used = None if drawn is None else seed
+        screen.print_json(screen.envelope(combined, "peak", level=level, errors=errors, seed=used, **content))
     else:
         _print(combined, found, level)
+
+
+def _drawn(
+    combined: DensityOfStates, count: int, seed: int, *, needed: bool, quiet: bool
+) -> Resamples | None:
+    """Resamples; without them, if the runs are too short and linear-response intervals were asked anyway."""
+    from reweight.errors import TooShortError
+
+    try:
+        return screen.resamples_of(combined, count, seed, quiet=quiet)
+    except TooShortError as error:
+        if needed:
+            raise
+        screen.message(f"not found again in resamples: {error}", quiet=quiet)
+        return None
 
 
 def _record(found: Peak) -> dict[str, Any]:
@@ -85,6 +114,10 @@ def _flat(found: Peak, temperature_unit: str, height_unit: str) -> dict[str, Any
     for (name, values), unit in zip(parts.items(), (temperature_unit, height_unit), strict=True):
         row |= {f"{name}{part} [{unit}]": value for part, value in zip(screen.PARTS, values, strict=True)}
     for name in (
+        "temperature_bias",
+        "height_bias",
+        "highest_share",
+        "found_share",
         "correlation",
         "prominence",
         "stands_out",
@@ -142,6 +175,27 @@ def describe_peak(combined: DensityOfStates, found: Peak, level: float) -> list[
         f"  height {height}, {span} {bottom} to {top}",
         f"  correlation of the two errors {found.correlation:+.2f}; stands {found.prominence:.3g} standard errors "
         "above the valley beside it",
+        *_describe_resampling(found),
+    ]
+
+
+def _describe_resampling(found: Peak) -> list[str]:
+    """What resampling says of a peak, if it was done."""
+    from reweight.answers.resamples import NOTABLE_BIAS
+
+    if found.highest_share is None:
+        return []
+    sure = f"highest in {100 * found.highest_share:.3g} % of the resamples"
+    if found.temperature_bias is None or found.height_bias is None:
+        return [f"  resampling: seldom found again; {sure}"]
+    ratios = (
+        found.temperature_bias / found.temperature_standard_error,
+        found.height_bias / found.height_standard_error,
+    )
+    small = max(map(abs, ratios)) <= NOTABLE_BIAS
+    return [
+        f"  resampling: bias {ratios[0]:+.2f} and {ratios[1]:+.2f} standard errors"
+        f"{'' if small else ' (above a quarter: sample longer)'}; {sure}"
     ]
 
 

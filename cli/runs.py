@@ -15,20 +15,38 @@ if TYPE_CHECKING:
 __all__ = ["one_in", "runs", "runs_record", "runs_table"]
 
 
+FEW_OBSERVABLES = 2  # more would not fit a screen; JSON has them all
+
+
 @click.command(short_help="Table of the runs: rows, transient, independent samples, overlap.")
 @click.argument("file", type=options.plain_path)
 @click.option(
     "--inputs", is_flag=True, help="List the files, too: rows and their fate, first and last energy, hash."
 )
+@click.option(
+    "--plot",
+    type=options.plain_path,
+    metavar="PICTURE",
+    help="Draw blocking curves, one panel a run: .pdf, .png or .svg.",
+)
+@click.option("--of", default="energy", show_default=True, help="What to draw: energy, or an observable.")
 @click.option("--json", "as_json", is_flag=True, help="Print JSON in place of the table.")
+@click.option("--force", is_flag=True, help="Replace the picture if it exists.")
 @click.option("--quiet", is_flag=True, help="No messages beside the answer.")
-def runs(file: Path, inputs: bool, as_json: bool, quiet: bool) -> None:
+def runs(
+    file: Path, inputs: bool, plot: Path | None, of: str, as_json: bool, force: bool, quiet: bool
+) -> None:
     """Show what each run is worth.
 
     FILE is a study (its files are read, nothing is written, and runs that share no energies are shown all the same)
     or a combined file.
     """
     combined = _load(file, quiet=quiet)
+    if plot is not None:
+        from reweight.figures.blocking import blocking_figure
+        from reweight.figures.style import save_figure
+
+        save_figure(blocking_figure(combined, of), plot, force=force, inputs=[file])
     if as_json:
         units = {
             "energy": combined.description.energy_unit,
@@ -63,16 +81,21 @@ def _load(file: Path, *, quiet: bool) -> DensityOfStates:
     return combine_study(load_study(file), connected=False)
 
 
-def one_in(combined: DensityOfStates, place: int) -> str:
-    """How many samples are worth one independent one, as people say it."""
+def one_in(combined: DensityOfStates, place: int, of: str = "energy") -> str:
+    """How many samples are worth one independent one, as people say it; in time, too, if there is a clock."""
     from reweight.notation import bracket
 
-    found = combined.runs[place].decision.inefficiency
+    run = combined.runs[place]
+    found = run.time_scales[of].slower
     if found.constant:
         return "constant"
-    if found.value <= 1:
-        return "every one"
-    return f"one in {bracket(found.value, found.standard_error, digits=1)}"
+    text = (
+        f"one in {bracket(found.value, found.standard_error, digits=1)}" if found.value > 1 else "every one"
+    )
+    if run.clock is not None:
+        time = bracket(found.value * run.clock.step, found.standard_error * run.clock.step, digits=1)
+        text += f", {time} {run.clock.text_unit()}".rstrip()
+    return text
 
 
 def runs_table(
@@ -82,6 +105,9 @@ def runs_table(
     unit = combined.description.temperature_label
     header: tuple[str, ...] = ("run", "temperature" + (f" [{unit}]" if unit else ""), "rows", "transient")
     header += ("independent", "independent samples")
+    few = tuple(each.name for each in combined.description.observables)
+    few = few if energies and len(few) <= FEW_OBSERVABLES else ()
+    header += few
     if energies:
         header += ("first energy", "last energy")
     header += ("shared with next hotter",)
@@ -91,6 +117,7 @@ def runs_table(
         run, rank = combined.runs[place], order.index(place)
         cells = (run.name, f"{combined.temperatures[place]:.6g}", f"{run.rows:,}", f"{run.transient_rows:,}")
         cells += (one_in(combined, place), f"{run.independent_samples:,.0f}")
+        cells += tuple(one_in(combined, place, name) for name in few)
         if energies:
             first, last = _ends(combined, place)
             cells += (f"{first:.7g}", f"{last:.7g}")
@@ -116,9 +143,24 @@ def runs_record(combined: DensityOfStates) -> list[dict[str, Any]]:
             "rows": run.rows,
             "transient": run.transient_rows,
             "samples": run.samples,
-            "statistical_inefficiency": run.decision.inefficiency.value,
-            "statistical_inefficiency_standard_error": run.decision.inefficiency.standard_error,
+            "discard": run.decision.discard,
+            "common_start": run.decision.common_start,
+            "statistical_inefficiency": run.inefficiency.value,
+            "statistical_inefficiency_standard_error": run.inefficiency.standard_error,
             "independent_samples": run.independent_samples,
+            "time_step": None if run.clock is None else run.clock.step,
+            "time_unit": None if run.clock is None else run.clock.unit,
+            "correlation": {
+                name: {
+                    "by_series": scales.series.value,
+                    "by_series_standard_error": scales.series.standard_error,
+                    "by_blocks": scales.blocks.value,
+                    "by_blocks_standard_error": scales.blocks.standard_error,
+                    "integrated_autocorrelation_time": scales.slower.value / 2,
+                    "integrated_autocorrelation_time_standard_error": scales.slower.standard_error / 2,
+                }
+                for name, scales in run.time_scales.items()
+            },
             "files": list(run.files),
         }
         for place, run in enumerate(combined.runs)

@@ -6,7 +6,8 @@ import csv
 import io
 import json
 import math
-from collections.abc import Iterable, Mapping, Sequence
+from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
+from contextlib import contextmanager
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -18,6 +19,7 @@ if TYPE_CHECKING:
     import xarray as xr
 
     from reweight.density_of_states import DensityOfStates, Description
+    from reweight.uncertainty.resampling import Resamples
 
 __all__ = [
     "PARTS",
@@ -30,6 +32,8 @@ __all__ = [
     "plain",
     "print_json",
     "print_table",
+    "progress_bar",
+    "resamples_of",
     "tell_outside",
     "titled",
     "units_text",
@@ -128,7 +132,15 @@ def plain(value: Any) -> Any:
     return value
 
 
-def envelope(combined: DensityOfStates, form: str, *, level: float | None, **content: Any) -> dict[str, Any]:
+def envelope(
+    combined: DensityOfStates,
+    form: str,
+    *,
+    level: float | None,
+    errors: str = "linear",
+    seed: int | None = None,
+    **content: Any,
+) -> dict[str, Any]:
     """Wrap an answer in what every JSON answer carries."""
     from reweight.checks.all_checks import findings
     from reweight.checks.finding import worst
@@ -137,11 +149,44 @@ def envelope(combined: DensityOfStates, form: str, *, level: float | None, **con
         "form": f"reweight {form} 1",
         "title": combined.description.title,
         "level": level,
-        "errors": "linear",
-        "seed": None,
+        "errors": errors,
+        "seed": seed,
         "verdict": str(worst(findings(combined))),
         **content,
     }
+
+
+def resamples_of(combined: DensityOfStates, count: int, seed: int, *, quiet: bool) -> Resamples:
+    """Draw resamples, with a bar on a terminal; tell of those in which the runs fall apart."""
+    from reweight.answers.resamples import draw_resamples
+
+    with progress_bar("resampling", count, quiet=quiet) as advance:
+        resamples = draw_resamples(combined, count, seed=seed, progress=advance)
+    lost = int(resamples.disconnected.sum())
+    if lost:
+        message(
+            f"in {lost} of {counted(count, 'resample')} some runs share no energies with the others: their overlap is weak; "
+            "add runs between them",
+            quiet=quiet,
+        )
+    return resamples
+
+
+@contextmanager
+def progress_bar(what: str, total: int, *, quiet: bool) -> Iterator[Callable[[int], None] | None]:
+    """Show a bar on a terminal, nothing elsewhere."""
+    from rich.console import Console
+    from rich.progress import BarColumn, MofNCompleteColumn, Progress, TextColumn
+
+    console = Console(stderr=True)
+    if quiet or not console.is_terminal:
+        yield None
+        return
+    with Progress(
+        TextColumn(what), BarColumn(), MofNCompleteColumn(), console=console, transient=True
+    ) as bar:
+        task = bar.add_task("", total=total)
+        yield lambda done: bar.update(task, advance=done)
 
 
 def print_json(content: Mapping[str, Any]) -> None:

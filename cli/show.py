@@ -64,7 +64,8 @@ def _print(combined: DensityOfStates, reaches: dict[str, Reach]) -> None:
         f"  made by reweight {combined.provenance.get('version', '')}; energies kept as {_kept(combined)}"
     )
     for each in description.observables:
-        click.echo(f"  observable {each.name}: {each.normalisation}, unit {each.unit}")
+        counted = "" if each.above is None else f", counted above {each.above:.12g}"
+        click.echo(f"  observable {each.name}: {each.normalisation}, unit {each.unit}{counted}")
     click.echo("\nwhat may be asked, and between which temperatures:")
     rows = [(name, *_reach_cells(within)) for name, within in reaches.items()]
     screen.print_table(("quantity", "from", "limited by", "to", "limited by"), rows, indent=2, left=(0, 2, 4))

@@ -15,10 +15,14 @@ from typing import TYPE_CHECKING
 from reweight.version import VERSION
 
 if TYPE_CHECKING:
+    from reweight.answers.blocking import blocking
+    from reweight.answers.covariance import covariance
+    from reweight.answers.crossing import Crossing, crossings
     from reweight.answers.curve import answer, curve
     from reweight.answers.distribution import distribution
     from reweight.answers.peak import Peak, peaks
     from reweight.answers.reach import Reach, reach
+    from reweight.answers.resamples import draw_resamples, resampled
     from reweight.answers.states import states
     from reweight.density_of_states import DensityOfStates
     from reweight.errors import (
@@ -37,6 +41,7 @@ if TYPE_CHECKING:
 __version__ = VERSION
 
 __all__ = [
+    "Crossing",
     "DataFileError",
     "DensityOfStates",
     "DisconnectedError",
@@ -48,20 +53,26 @@ __all__ = [
     "StudyError",
     "__version__",
     "answer",
+    "blocking",
     "combine",
+    "covariance",
+    "crossings",
     "curve",
     "distribution",
+    "draw_resamples",
     "load_study",
     "open_combined",
     "peaks",
     "reach",
     "read_runs",
+    "resampled",
     "save",
     "states",
 ]
 
 # Public names are loaded when first used: xarray and SciPy take seconds to import, `reweight --help` must not.
 _HOMES = {
+    "Crossing": "answers.crossing",
     "DataFileError": "errors",
     "DensityOfStates": "density_of_states",
     "DisconnectedError": "errors",
@@ -72,14 +83,19 @@ _HOMES = {
     "ReweightError": "errors",
     "StudyError": "errors",
     "answer": "answers.curve",
+    "blocking": "answers.blocking",
     "combine": "studies",
+    "covariance": "answers.covariance",
+    "crossings": "answers.crossing",
     "curve": "answers.curve",
     "distribution": "answers.distribution",
+    "draw_resamples": "answers.resamples",
     "load_study": "study",
     "open_combined": "saving",
     "peaks": "answers.peak",
     "reach": "answers.reach",
     "read_runs": "runs",
+    "resampled": "answers.resamples",
     "save": "saving",
     "states": "answers.states",
 }

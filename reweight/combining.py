@@ -9,37 +9,34 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterator, Sequence
 from concurrent.futures import ThreadPoolExecutor
-from dataclasses import dataclass
 from itertools import chain
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
-from reweight.density_of_states import Decision, DensityOfStates, Description, LeftOut, RunRecord
+from reweight.deciding import FEWEST_ROWS, decide
+from reweight.density_of_states import DensityOfStates, Description, LeftOut, RunRecord
 from reweight.errors import DisconnectedError, InputError, TooShortError
 from reweight.estimate import Estimate
 from reweight.memory import keep_freed_memory
 from reweight.multistate import Solution, cut_sharing, pairwise_start, solution_at, solve
 from reweight.runs import Source
-from reweight.series.correlation import Inefficiency, shrink, statistical_inefficiency
-from reweight.series.transient import transient_length
-from reweight.tally.assemble import Assembly, assemble
+from reweight.tally.assemble import Assembly
 from reweight.tally.levels import are_levels, find_spacing
 from reweight.tally.nodes import Nodes
 from reweight.tally.panels import panel_width
 from reweight.tally.run_tally import RunTally
-from reweight.tally.thinned import Thinned
 
-__all__ = ["Progress", "combine_sources", "decide", "estimate_of", "tally_sources", "weighted"]
+__all__ = ["Progress", "combine_sources", "estimate_of", "tally_sources", "weighted"]
 
 Array = NDArray[np.float64]
 
 FIRST_ROWS = 4096
-FEWEST_ROWS = 10
-FEWEST_LEAVES = 5  # after the transient; from fewer blocks no error can be told
 LARGEST_ENERGY = 1e60  # the reach asks for eighth powers, which must stay finite
-WORKERS = 2
+WORKERS = (
+    1  # more do not help: sums hold the interpreter's lock, and files are read ahead and hashed beside it
+)
 
 # Called with a run's name and the number of rows just tallied; 0 once the run is complete.
 Progress = Callable[[str, int], None]
@@ -69,7 +66,14 @@ def combine_sources(
     InputError, DisconnectedError, ConvergenceError
     """
     tallies = tally_sources(sources, description, workers=workers, progress=progress)
-    decided = decide(tallies, [source.discard for source in sources], [source.name for source in sources])
+    clocks = [source.clock() for source in sources]
+    decided = decide(
+        tallies,
+        [source.discard for source in sources],
+        [source.name for source in sources],
+        clocks=clocks,
+        exchange=description.exchange,
+    )
     records = [
         RunRecord(
             name=source.name,
@@ -79,8 +83,11 @@ def combine_sources(
             leaf_rows=rows,
             thinned=thinned,
             files=_accounted(source.files(), int(rows[: decision.first_leaf].sum())),
+            clock=clock,
         )
-        for source, tally, (decision, rows, thinned) in zip(sources, tallies, decided.runs, strict=True)
+        for source, tally, clock, (decision, rows, thinned) in zip(
+            sources, tallies, clocks, decided.runs, strict=True
+        )
     ]
     return DensityOfStates(
         description=description,
@@ -140,9 +147,7 @@ def tally_sources(
             )
         return tally
 
-    if (
-        workers == 1
-    ):  # a thread of its own would only cost: its memory is handed back to the system again and again
+    if workers == 1:
         return list(map(read, sources, openings, streams))
     with ThreadPoolExecutor(max_workers=workers) as pool:
         return list(pool.map(read, sources, openings, streams))
@@ -182,83 +187,6 @@ def _nodes(openings: Sequence[Array], beta: Array, description: Description) -> 
         description.resolution,
     )
     return Nodes(width, discrete=are_levels(np.unique(pooled).size, pooled.size), spacing=spacing)
-
-
-@dataclass(frozen=True)
-class Decided:
-    """Runs with their decisions, and their leaves on common nodes."""
-
-    runs: list[tuple[Decision, NDArray[np.int64], Thinned]]
-    assembly: Assembly
-
-
-def decide(tallies: Sequence[RunTally], discards: Sequence[int | str], names: Sequence[str]) -> Decided:
-    """Transient and inefficiency of every run, from what the tallies kept."""
-    completed = [tally.complete() for tally in tallies]
-    starts = [
-        _start(thinned, leaves.rows, tally.row_count, discard, name)
-        for tally, (leaves, thinned), discard, name in zip(tallies, completed, discards, names, strict=True)
-    ]
-    raw = []
-    for (leaves, thinned), (_, first_leaf) in zip(completed, starts, strict=True):
-        first = int(leaves.rows[:first_leaf].sum()) // thinned.group
-        raw.append(
-            statistical_inefficiency(
-                thinned.means()[first:, 0],
-                group=thinned.group,
-                within_variance=float(thinned.within_variance()[first:, 0].mean()),
-            )
-        )
-    kept = np.array(
-        [leaves.rows[first:].sum() for (leaves, _), (_, first) in zip(completed, starts, strict=True)], float
-    )
-    weights = _shrunk(raw, kept, [thinned.group for _, thinned in completed])
-    decisions = [
-        Decision(
-            discard=discard,
-            transient=transient,
-            first_leaf=first_leaf,
-            inefficiency=inefficiency,
-            weight_inefficiency=float(weight),
-        )
-        for discard, (transient, first_leaf), inefficiency, weight in zip(
-            discards, starts, raw, weights, strict=True
-        )
-    ]
-    return Decided(
-        runs=[(d, leaves.rows, thinned) for d, (leaves, thinned) in zip(decisions, completed, strict=True)],
-        assembly=assemble(tallies, [leaves for leaves, _ in completed]),
-    )
-
-
-def _start(
-    thinned: Thinned, leaf_rows: NDArray[np.int64], rows: int, discard: int | str, name: str
-) -> tuple[int, int]:
-    """Rows of the transient, and the first leaf after it."""
-    if discard == "auto":
-        transient = transient_length(thinned.means()[:, 0]) * thinned.group
-    elif isinstance(discard, int):
-        transient = discard
-    else:
-        transient = int(np.ceil(rows * float(discard.strip(" %")) / 100))
-    first_leaf = int(np.searchsorted(np.concatenate([[0], np.cumsum(leaf_rows)]), transient))
-    if leaf_rows.size - first_leaf < FEWEST_LEAVES or rows - int(leaf_rows[:first_leaf].sum()) < FEWEST_ROWS:
-        raise TooShortError(
-            f"discard must leave at least {FEWEST_ROWS} rows in {FEWEST_LEAVES} of the {leaf_rows.size} blocks of a run; "
-            f"got {discard!r} of {rows} rows (run {name!r}). Discard fewer rows, or leave the run out with use = false.",
-            run=name,
-        )
-    return transient, first_leaf
-
-
-def _shrunk(raw: Sequence[Inefficiency], kept: Array, groups: Sequence[int]) -> Array:
-    """Inefficiencies for the weights; constant runs count as one sample and stay out of the common value."""
-    values = np.array([each.value for each in raw])
-    varying = np.array([not each.constant for each in raw])
-    if varying.any():
-        windows = np.array([each.window * group for each, group in zip(raw, groups, strict=True)])
-        values[varying] = shrink(values[varying], windows[varying], kept[varying])
-    return values
 
 
 def estimate_of(

@@ -17,11 +17,13 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from reweight import units
-from reweight.errors import InputError
+from reweight.clock import Clock
+from reweight.errors import InputError, NotInFileError
 from reweight.estimate import Estimate
 from reweight.quantities.catalogue import available, named
 from reweight.quantities.quantity import Quantity
 from reweight.series.correlation import Inefficiency
+from reweight.series.time_scales import TimeScales, time_scales
 from reweight.study.values import base_and_power
 from reweight.tally.nodes import COUNT, Column
 from reweight.tally.run_tally import RunTally
@@ -43,6 +45,8 @@ class ObservableDescription:
         Powers that were tallied.
     absolute : bool
         The absolute value was tallied, too.
+    above : float or None
+        Samples above this were counted, too.
     """
 
     name: str
@@ -50,16 +54,25 @@ class ObservableDescription:
     normalisation: str = "plain"
     moments: tuple[int, ...] = (1,)
     absolute: bool = False
+    above: float | None = None
 
     def columns(self) -> tuple[Column, ...]:
         """Tallied columns this observable needs."""
-        powers = tuple(Column(self.name, power) for power in sorted({1, *self.moments}))
-        return (*powers, Column(self.name, 1, absolute=True)) if self.absolute else powers
+        columns = [Column(self.name, power) for power in sorted({1, *self.moments})]
+        if self.absolute:
+            columns.append(Column(self.name, 1, absolute=True))
+        if self.above is not None:
+            columns.append(Column(self.name, above=self.above))
+        return tuple(columns)
 
 
 @dataclass(frozen=True, kw_only=True)
 class Description:
-    """What was simulated, in which units, and how runs are weighted."""
+    """What was simulated, in which units, and how runs are weighted.
+
+    ``exchange`` says that the runs are the temperatures of one replica exchange: coupled, of equal length, and with one
+    common start.
+    """
 
     title: str = ""
     energy_unit: str = units.REDUCED
@@ -73,6 +86,7 @@ class Description:
     ground_degeneracy: int | None = None
     weighting: str = "independent"
     resolution: float | None = None
+    exchange: bool = False
     observables: tuple[ObservableDescription, ...] = ()
 
     @property
@@ -150,11 +164,13 @@ class Decision:
     Attributes
     ----------
     discard : int or str
-        As asked: ``"auto"``, rows, or a percentage.
+        As asked: ``"auto"``, rows, a percentage, or a time.
     transient : int
-        Rows found (or asked) to be left out at the start.
+        Rows found (or asked) to be left out at the start of this run.
     first_leaf : int
         First leaf used: the transient rounded up to a whole leaf.
+    common_start : bool
+        The first leaf is that of the run of a replica exchange that starts latest.
     inefficiency : Inefficiency
         Of the energy after the transient.
     weight_inefficiency : float
@@ -166,6 +182,7 @@ class Decision:
     first_leaf: int
     inefficiency: Inefficiency
     weight_inefficiency: float
+    common_start: bool = False
 
 
 @dataclass(frozen=True, kw_only=True, eq=False)
@@ -184,6 +201,8 @@ class RunRecord:
     thinned : Thinned
     files : tuple of dict
         Ledger entries: path, sha256, rows read, first and last energy.
+    clock : Clock or None
+        Time between rows, if it is known.
     """
 
     name: str
@@ -193,6 +212,7 @@ class RunRecord:
     leaf_rows: NDArray[np.int64]
     thinned: Thinned
     files: tuple[dict[str, Any], ...] = ()
+    clock: Clock | None = None
 
     @property
     def rows(self) -> int:
@@ -210,9 +230,43 @@ class RunRecord:
         return self.rows - self.transient_rows
 
     @property
+    def inefficiency(self) -> Inefficiency:
+        """Of the energy: the slower of its two estimates, as far as chance does not explain the difference."""
+        return self.time_scales["energy"].slower
+
+    @property
     def independent_samples(self) -> float:
-        """Rows used over the statistical inefficiency."""
-        return self.samples / self.decision.weight_inefficiency
+        """Rows used over the statistical inefficiency of the energy."""
+        return self.samples / self.inefficiency.value
+
+    @cached_property
+    def time_scales(self) -> dict[str, TimeScales]:
+        """Statistical inefficiency, estimated twice, of the energy and of each observable, by name."""
+        found = {}
+        for name in ("energy", *self.tally.observables):
+            means, within = self.series(name)
+            block = max(1, int(self.leaf_rows[0]) // self.thinned.group)
+            found[name] = time_scales(means, within, group=self.thinned.group, block=block)
+        return found
+
+    def series(self, name: str) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+        """Means over groups of rows after the transient, and the variances inside the groups, of one column.
+
+        Of an observable that is also tallied without its sign, means without their sign: rare changes of sign, which
+        leave energies as they are, would else count as correlation.
+
+        Raises
+        ------
+        NotInFileError
+            There is no such column.
+        """
+        names = ("energy", *self.tally.observables)
+        if name not in names:
+            raise NotInFileError(f"series must be one of {', '.join(names)}; got {name!r}.")
+        column, first = names.index(name), self.transient_rows // self.thinned.group
+        means = self.thinned.means()[first:, column]
+        unsigned = any(each.observable == name and each.absolute for each in self.tally.columns)
+        return np.abs(means) if unsigned else means, self.thinned.within_variance()[first:, column]
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -275,12 +329,12 @@ class DensityOfStates:
         NotInFileError
             A name is not among those that can be asked.
         """
-        return named(names, self.description.normalisations)
+        return named(names, self.description.normalisations, self.description.columns)
 
     @property
     def quantity_names(self) -> tuple[str, ...]:
         """Names of everything that can be asked."""
-        return tuple(available(self.description.normalisations))
+        return tuple(available(self.description.normalisations, self.description.columns))
 
     def choices(self) -> list[str]:
         """What somebody decided by hand, in words."""
@@ -288,6 +342,8 @@ class DensityOfStates:
         made = []
         if description.weighting != "independent":
             made.append("weighting: all samples alike, not by statistical inefficiency")
+        if description.exchange:
+            made.append("replica exchange: one common start, the latest of all runs")
         if description.resolution is not None:
             made.append(f"resolution: {description.resolution:g} {description.energy_unit}")
         made += [

@@ -7,6 +7,7 @@
             StudyError        a key of a study file
             DataFileError     a data file: which file, which line
             NotInFileError    a quantity this combined file cannot answer
+            NoCrossingError   a value that a quantity does not take
             OutOfReachError   a temperature the sampled energies do not support
             TooShortError     a run with too few samples
         DisconnectedError     runs that share no energies
@@ -31,6 +32,7 @@ __all__ = [
     "DataFileError",
     "DisconnectedError",
     "InputError",
+    "NoCrossingError",
     "NotInFileError",
     "OutOfReachError",
     "OutputError",
@@ -91,6 +93,20 @@ class NotInFileError(InputError):
     def __init__(self, message: str, *, available: Sequence[str] = ()) -> None:
         super().__init__(message)
         self.available = tuple(available)
+
+
+class NoCrossingError(InputError):
+    """A quantity does not take the value asked for, or not at single temperatures.
+
+    Attributes
+    ----------
+    taken : tuple of float
+        Lowest and highest value it takes where it was looked for, in the unit of the answer.
+    """
+
+    def __init__(self, message: str, *, taken: tuple[float, float] = (np.nan, np.nan)) -> None:
+        super().__init__(message)
+        self.taken = taken
 
 
 class OutOfReachError(InputError):

@@ -21,19 +21,21 @@ ROWS = 32  # at a time, at least
 COLUMNS = 16  # right-hand sides that triangular solvers still treat on one thread (measured)
 
 
-def product(left: NDArray[np.float64] | csr_array, right: NDArray[np.float64]) -> NDArray[np.float64]:
+def product(
+    left: NDArray[np.float64] | csr_array, right: NDArray[np.float64] | csr_array
+) -> NDArray[np.float64]:
     """Matrix product, piece by piece.
 
     Parameters
     ----------
     left : numpy.ndarray or sparse array, shape (M, K)
-    right : numpy.ndarray, shape (K, N)
+    right : numpy.ndarray or sparse array, shape (K, N)
 
     Returns
     -------
     numpy.ndarray, shape (M, N)
     """
-    if isinstance(left, csr_array):  # never divided among threads
+    if isinstance(left, csr_array) or isinstance(right, csr_array):  # never divided among threads
         return np.asarray(left @ right)
     height, (inner, width) = left.shape[0], right.shape
     result = np.empty((height, width))

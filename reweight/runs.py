@@ -14,11 +14,12 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
+from reweight.clock import Clock
 from reweight.errors import InputError
 from reweight.labels import energy_unit_label, temperature_attributes
-from reweight.reading import FileLedger, run_chunks
+from reweight.reading import FileLedger, Timekeeper, run_chunks
 from reweight.study import Run, Study
-from reweight.units import canonical_unit
+from reweight.units import REDUCED, canonical_unit
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -40,9 +41,11 @@ class Source:
     chunks : callable
         Returns an iterator over arrays (rows, 1 + observables), every number finite.
     discard : int or str
-        ``"auto"``, rows, or a percentage such as ``"10 %"``.
+        ``"auto"``, rows, a percentage such as ``"10 %"``, or a time such as ``"20 ns"``.
     files : callable
         Returns the ledger entries, complete once the chunks are exhausted.
+    clock : callable
+        Returns the time between rows, known once the chunks are exhausted; None if there is no clock.
     """
 
     name: str
@@ -50,6 +53,7 @@ class Source:
     chunks: Callable[[], Iterator[Array]]
     discard: int | str = "auto"
     files: Callable[[], tuple[dict[str, Any], ...]] = field(default=tuple)
+    clock: Callable[[], Clock | None] = lambda: None
 
 
 def file_sources(study: Study) -> list[Source]:
@@ -59,10 +63,12 @@ def file_sources(study: Study) -> list[Source]:
 
 def _file_source(study: Study, run: Run) -> Source:
     ledgers: list[FileLedger] = []
+    timekeepers: list[Timekeeper] = []
 
     def chunks() -> Iterator[Array]:
         ledgers.clear()
-        return run_chunks(study, run, ledgers)
+        timekeepers[:] = [Timekeeper()]
+        return run_chunks(study, run, ledgers, timekeepers[0])
 
     return Source(
         name=run.name,
@@ -70,6 +76,7 @@ def _file_source(study: Study, run: Run) -> Source:
         chunks=chunks,
         discard=run.discard,
         files=lambda: tuple(dataclasses.asdict(ledger) for ledger in ledgers),
+        clock=lambda: timekeepers[0].clock(study.columns.time_unit),
     )
 
 
@@ -96,7 +103,8 @@ def read_runs(study: Study) -> xr.DataTree:
     children = {}
     for run in study.used_runs:
         ledgers: list[FileLedger] = []
-        rows = np.concatenate(list(run_chunks(study, run, ledgers)))
+        timekeeper = Timekeeper()
+        rows = np.concatenate(list(run_chunks(study, run, ledgers, timekeeper)))
         columns = {"energy": rows[:, 0]}
         columns |= {name: rows[:, 1 + place] for place, name in enumerate(study.observables)}
         child = _child(
@@ -112,6 +120,8 @@ def read_runs(study: Study) -> xr.DataTree:
             "source": ", ".join(run.files),
             "sha256": ", ".join(ledger.sha256 for ledger in ledgers),
         }
+        if (clock := timekeeper.clock(study.columns.time_unit)) is not None:
+            child.attrs |= {"time_step": clock.step, "time_unit": clock.unit}
         children[run.name] = child
     tree = xr.DataTree(children={name: xr.DataTree(child) for name, child in children.items()})
     tree.attrs = {
@@ -230,9 +240,13 @@ def _check(name: str, columns: Mapping[str, Array]) -> None:
 
 
 def tree_sources(
-    tree: xr.DataTree, beta: Mapping[str, float], observables: tuple[str, ...], discard: int | str
+    tree: xr.DataTree,
+    beta: Mapping[str, float],
+    observables: tuple[str, ...],
+    discard: int | str,
+    clock: Clock | None = None,
 ) -> list[Source]:
-    """One source a child of a tree.
+    """One source a child of a tree; a child's attributes ``time_step`` and ``time_unit`` are its own clock.
 
     Raises
     ------
@@ -249,8 +263,26 @@ def tree_sources(
         if missing:
             raise InputError(f"every run must have the same observables; run {name!r} lacks {missing[0]!r}.")
         rows = np.stack([columns[each] for each in ("energy", *observables)], axis=1)
-        sources.append(Source(name=name, beta=beta[name], chunks=_one_chunk(rows), discard=discard))
+        sources.append(
+            Source(
+                name=name,
+                beta=beta[name],
+                chunks=_one_chunk(rows),
+                discard=discard,
+                clock=_always(_own_clock(child, clock)),
+            )
+        )
     return sources
+
+
+def _own_clock(child: xr.DataTree, clock: Clock | None) -> Clock | None:
+    if "time_step" not in child.attrs:
+        return clock
+    return Clock(step=float(child.attrs["time_step"]), unit=str(child.attrs.get("time_unit", REDUCED)))
+
+
+def _always(clock: Clock | None) -> Callable[[], Clock | None]:
+    return lambda: clock
 
 
 def _one_chunk(rows: Array) -> Callable[[], Iterator[Array]]:

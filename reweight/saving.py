@@ -19,6 +19,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from reweight.clock import Clock
 from reweight.combining import weighted
 from reweight.density_of_states import Decision, DensityOfStates, Description, LeftOut, RunRecord
 from reweight.errors import CombinedFileError
@@ -107,6 +108,8 @@ def _write(file: Any, combined: DensityOfStates) -> None:
                 "nodes": _json(dataclasses.asdict(tally.nodes)),
             }
         )
+        if run.clock is not None:
+            group.setncatts({"time_step": run.clock.step, "time_unit": run.clock.unit})
         _variable(group, "kept_rows", ("row", "column"), tally.tail)
         if tally.leaves is not None and tally.thinned is not None:
             _variable(group, "keys", ("key",), tally.leaves.keys)
@@ -224,6 +227,7 @@ def _read(file: Any, most_bytes: int) -> DensityOfStates:
             leaf_rows=leaves.rows,
             thinned=thinned,
             files=tuple(json.loads(group.files)),
+            clock=_clock(group),
         )
         for group, tally, leaves, thinned in loaded
     ]
@@ -245,6 +249,12 @@ def _read(file: Any, most_bytes: int) -> DensityOfStates:
 
 def _decision(data: dict[str, Any]) -> Decision:
     return Decision(**{**data, "inefficiency": Inefficiency(**data["inefficiency"])})
+
+
+def _clock(group: Any) -> Clock | None:
+    if "time_step" not in group.ncattrs():
+        return None
+    return Clock(step=float(group.time_step), unit=str(group.time_unit))
 
 
 def _values(group: Any, name: str, most_bytes: int) -> NDArray[Any]:

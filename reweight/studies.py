@@ -2,19 +2,22 @@
 
 from __future__ import annotations
 
+import math
+import numbers
 import os
 from collections.abc import Mapping
 from typing import TYPE_CHECKING, Any
 
 from numpy.typing import ArrayLike
 
+from reweight.clock import Clock
 from reweight.combining import WORKERS, Progress, combine_sources
 from reweight.density_of_states import DensityOfStates, Description, LeftOut, ObservableDescription
 from reweight.errors import InputError
 from reweight.runs import as_tree, file_sources, tree_sources
 from reweight.study import Study, load_study
 from reweight.study.values import discarded_start, number_of_states
-from reweight.units import REDUCED
+from reweight.units import REDUCED, time_factor
 from reweight.version import VERSION
 
 if TYPE_CHECKING:
@@ -36,6 +39,9 @@ def combine(
     title: str = "",
     weighting: str = "independent",
     discard: int | str = "auto",
+    exchange: bool = False,
+    time_step: float | None = None,
+    time_unit: str | None = None,
     observables: Mapping[str, Mapping[str, Any]] | None = None,
     workers: int | None = None,
     progress: Progress | None = None,
@@ -61,13 +67,20 @@ def combine(
     weighting : {"independent", "samples"}
         Weight samples by statistical inefficiency, or all alike.
     discard : int or str
-        Start of every run to leave out: ``"auto"``, rows, or a percentage such as ``"10 %"``.
+        Start of every run to leave out: ``"auto"``, rows, a percentage such as ``"10 %"``, or a time such as
+        ``"20 ns"`` if the time between samples is known.
+    exchange : bool
+        The runs are the temperatures of one replica exchange, recorded at the same times.
+    time_step : float, optional
+        Time between samples, in `time_unit`: a unit of time, ``"step"``, ``"sweep"`` or ``"reduced"`` (the default).
+    time_unit : str, optional
     observables : mapping, optional
-        What the columns beside the energy are: name to ``unit``, ``is``, ``moments``, ``absolute`` as in a study file.
+        What the columns beside the energy are: name to ``unit``, ``is``, ``moments``, ``absolute``, ``above`` as in a
+        study file.
         By default every further column is taken as a plain observable.
     workers : int, optional
-        Runs read at the same time; by default two from files, and one from memory, where more would only wait for one
-        another.  The result does not depend on it.
+        Runs read at the same time; one by default, since more mostly wait for one another.  The result does not depend
+        on it.
     progress : callable, optional
         Called with a run's name and the number of rows just tallied.
 
@@ -90,9 +103,10 @@ def combine(
     <DensityOfStates: 2 runs, ... samples, 1 to 1.2 (reduced units, k_B = 1)>
     """
     given = (temperatures, energy_unit, temperature_unit, count, states, ground_degeneracy, observables)
-    changed = (per, title, weighting, discard) != ("particle", "", "independent", "auto")
+    clock = (time_step, time_unit)
+    changed = (per, title, weighting, discard, exchange) != ("particle", "", "independent", "auto", False)
     if isinstance(runs, (str, os.PathLike, Study)):
-        if changed or any(each is not None for each in given):
+        if changed or any(each is not None for each in (*given, *clock)):
             raise InputError(
                 "a study file says temperatures, units, weighting and all the rest itself; nothing but workers and "
                 "progress may be given beside it. Change the study."
@@ -115,15 +129,16 @@ def combine(
         states=None if states is None else _number_of_states(states),
         ground_degeneracy=ground_degeneracy,
         weighting=_one_of("weighting", weighting, ("independent", "samples")),
+        exchange=exchange,
         observables=_described(tree, observables),
     )
     beta = {name: _beta(description, child) for name, child in tree.children.items()}
     names = tuple(each.name for each in description.observables)
     return combine_sources(
-        tree_sources(tree, beta, names, _discarded(discard)),
+        tree_sources(tree, beta, names, _discarded(discard), _clock(time_step, time_unit)),
         description,
         provenance={"version": VERSION},
-        workers=workers or 1,
+        workers=workers or WORKERS,
         progress=progress,
     )
 
@@ -146,6 +161,7 @@ def combine_study(
         ground_degeneracy=system.ground_degeneracy,
         weighting=study.weighting,
         resolution=study.resolution,
+        exchange=study.conditions.exchange,
         observables=tuple(
             ObservableDescription(
                 name=name,
@@ -153,6 +169,7 @@ def combine_study(
                 normalisation=each.normalisation,
                 moments=each.moments,
                 absolute=each.absolute,
+                above=each.above,
             )
             for name, each in study.observables.items()
         ),
@@ -180,6 +197,18 @@ def _discarded(discard: int | str) -> int | str:
         raise InputError(f"discard {error}") from None
 
 
+def _clock(step: float | None, unit: str | None) -> Clock | None:
+    if step is None:
+        if unit is not None:
+            raise InputError(f"time_unit must go with time_step; got {unit!r} alone. Pass time_step, too.")
+        return None
+    if not (math.isfinite(step) and step > 0):
+        raise InputError(f"time_step must be finite and greater than 0; got {step}.")
+    unit = REDUCED if unit is None else unit
+    time_factor(unit, unit)  # refuses what is no time
+    return Clock(step=float(step), unit=unit)
+
+
 def _number_of_states(text: str) -> str:
     try:
         return number_of_states(text)
@@ -191,6 +220,14 @@ def _one_of(name: str, value: str, allowed: tuple[str, ...]) -> str:
     if value not in allowed:
         raise InputError(f"{name} must be one of {', '.join(allowed)}; got {value!r}.")
     return value
+
+
+def _threshold(name: str, value: object) -> float | None:
+    if value is None:
+        return None
+    if isinstance(value, bool) or not isinstance(value, numbers.Real) or not math.isfinite(value):
+        raise InputError(f"above must be a finite number (observable {name!r}); got {value!r}.")
+    return float(value)
 
 
 def _beta(description: Description, child: xr.DataTree) -> float:
@@ -209,10 +246,10 @@ def _described(
         observables = {str(name): {} for name in first.data_vars if name != "energy"}
     described = []
     for name, keys in observables.items():
-        unknown = set(keys) - {"unit", "is", "moments", "absolute"}
+        unknown = set(keys) - {"unit", "is", "moments", "absolute", "above"}
         if unknown:
             raise InputError(
-                f"observable {name!r} must be described by unit, is, moments, absolute; got {unknown.pop()!r}."
+                f"observable {name!r} must be described by unit, is, moments, absolute, above; got {unknown.pop()!r}."
             )
         attributes = first[name].attrs if name in first.data_vars else {}
         described.append(
@@ -226,6 +263,7 @@ def _described(
                 ),
                 moments=tuple(keys.get("moments", (1,))),
                 absolute=bool(keys.get("absolute", False)),
+                above=_threshold(name, keys.get("above")),
             )
         )
     return tuple(described)

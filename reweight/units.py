@@ -29,11 +29,14 @@ __all__ = [
     "canonical_unit",
     "energy_factor",
     "per_kelvin",
+    "time_factor",
     "to_kelvin",
 ]
 
 REDUCED = "reduced"
 TEMPERATURE_UNITS = ("K", "degC", REDUCED)
+
+COUNTED_TIMES = ("step", "sweep", REDUCED)  # clocks of simulations that know no seconds
 
 _EXAMPLES = ("kJ/mol", "kcal/mol", "eV", "meV", "hartree", "J", "cm^-1", "K", REDUCED)
 _FACTOR = re.compile(r"([A-Za-zµμ_Å°%]+)(?:\^?([+-]?[0-9]{1,2}))?")
@@ -128,6 +131,42 @@ def energy_factor(from_unit: str, to_unit: str) -> float:
     return _boltzmann_constant(to_unit) / _boltzmann_constant(from_unit)
 
 
+def time_factor(from_unit: str, to_unit: str) -> float:
+    """Convert times: the number by which values in one unit are multiplied to have them in another.
+
+    Parameters
+    ----------
+    from_unit, to_unit : str
+        Units of time such as ``"ps"``, or the same one of ``"step"``, ``"sweep"`` and ``"reduced"``.
+
+    Raises
+    ------
+    InputError
+        A unit is unknown or no time, or one is counted and the other is not the same.
+
+    Examples
+    --------
+    >>> round(time_factor("ns", "ps"), 6), time_factor("sweep", "sweep")
+    (1000.0, 1.0)
+    """
+    if from_unit in COUNTED_TIMES or to_unit in COUNTED_TIMES:
+        if from_unit != to_unit:
+            raise InputError(
+                f"a time in {from_unit!r} must be convertible to {to_unit!r}; it is not. Give it in {to_unit!r}."
+            )
+        return 1.0
+    given, wanted = (
+        _quantity(unit, "unit of time", ("ps", "ns", *COUNTED_TIMES)) for unit in (from_unit, to_unit)
+    )
+    for unit, quantity in ((from_unit, given), (to_unit, wanted)):
+        if not quantity.check("[time]"):
+            raise InputError(
+                f"unit of time must be a time, or one of {', '.join(COUNTED_TIMES)}; got {unit!r}, which has the "
+                f"dimension {quantity.dimensionality}."
+            )
+    return float((given / wanted).to("dimensionless").magnitude)
+
+
 def to_kelvin(value: float, temperature_unit: str) -> float:
     """Temperature above absolute zero: kelvin for ``"K"`` and ``"degC"``, unchanged in reduced units."""
     return value + scipy.constants.zero_Celsius if temperature_unit == "degC" else value
@@ -192,7 +231,9 @@ def _registry() -> pint.UnitRegistry[float]:
     return pint.UnitRegistry(cache_folder=None)
 
 
-def _quantity(unit: str) -> pint.Quantity[float]:
+def _quantity(
+    unit: str, what: str = "energy unit", examples: tuple[str, ...] = _EXAMPLES
+) -> pint.Quantity[float]:
     """One of a unit, from its names and powers alone."""
     import pint
 
@@ -202,10 +243,10 @@ def _quantity(unit: str) -> pint.Quantity[float]:
         try:
             quantity = quantity * registry.Quantity(1.0, registry.get_name(name)) ** power
         except (pint.errors.UndefinedUnitError, pint.errors.OffsetUnitCalculusError):
-            near = difflib.get_close_matches(name.lower(), _EXAMPLES, n=1, cutoff=0.7)
+            near = difflib.get_close_matches(name.lower(), examples, n=1, cutoff=0.7)
             hint = f" Did you mean {near[0]!r}?" if near else ""
             raise InputError(
-                f"energy unit must be made of known units; got {unit!r}, in which {name!r} is not one.{hint} "
-                f"Use a unit like {', '.join(_EXAMPLES)}."
+                f"{what} must be made of known units; got {unit!r}, in which {name!r} is not one.{hint} "
+                f"Use a unit like {', '.join(examples)}."
             ) from None
     return quantity

@@ -24,7 +24,7 @@ LONGEST = 400
 ROWS: tuple[tuple[str, ...], ...] = (
     ("errors", "version"),
     ("units", "files", "notation", "memory", "products"),
-    ("labels",),
+    ("labels", "clock"),
     ("study",),
     ("reading",),
     ("runs",),
@@ -34,6 +34,7 @@ ROWS: tuple[tuple[str, ...], ...] = (
     ("estimate",),
     ("quantities",),
     ("density_of_states",),
+    ("deciding",),
     ("combining",),
     ("studies", "saving"),
     ("uncertainty",),

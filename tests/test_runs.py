@@ -292,7 +292,7 @@ def test_no_runs_at_all_are_refused() -> None:
         ({"weighting": "equal"}, "weighting must be one of independent, samples; got 'equal'"),
         (
             {"observables": {"order": {"units": "1"}}},
-            "must be described by unit, is, moments, absolute; got 'units'",
+            "must be described by unit, is, moments, absolute, above; got 'units'",
         ),
         ({"observables": {"order": {}}}, "run 'a' lacks 'order'"),
         ({"energy_unit": "kJ/mole of sheep"}, "sheep"),

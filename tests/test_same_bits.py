@@ -28,7 +28,13 @@ Rows = NDArray[np.float64]
 
 LONG = 150_001
 TEMPERATURES = {"narrow": 1.0, "wide": 1.15}
-MOMENTS = (COUNT, Column("m", 1), Column("m", 2), Column("m", 1, absolute=True))
+MOMENTS = (
+    COUNT,
+    Column("m", 1),
+    Column("m", 2),
+    Column("m", 1, absolute=True),
+    Column("m", above=0.1),
+)
 
 
 def continuous(rng: np.random.Generator, length: int = LONG) -> dict[str, Rows]:

@@ -3,29 +3,33 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import replace
+from typing import Any
 
 import numpy as np
 import xarray as xr
 from numpy.typing import ArrayLike, NDArray
 
-from reweight.answers.evaluate import Evaluation, evaluate
+from reweight.answers.evaluate import evaluate
 from reweight.answers.presentation import presentation
-from reweight.answers.reach import Reach, judge, reach
+from reweight.answers.resamples import ask_resamples, resample_attributes
+from reweight.answers.support import (
+    DEFAULT_QUANTITIES,
+    common_reach,
+    counted_from,
+    origin_beta,
+    out_of_reach,
+)
 from reweight.density_of_states import DensityOfStates
-from reweight.errors import InputError, OutOfReachError
-from reweight.labels import error_attributes, temperature_attributes, value_attributes
-from reweight.notation import significant
-from reweight.quantities.quantity import Measure, Quantity
+from reweight.errors import InputError
+from reweight.labels import error_attributes, temperature_attributes
 from reweight.uncertainty.intervals import check_level, half_width
+from reweight.uncertainty.resampling import Resamples
 
-__all__ = ["DEFAULT_QUANTITIES", "answer", "common_reach", "curve", "temperature_grid"]
+__all__ = ["answer", "curve", "temperature_grid"]
 
 Array = NDArray[np.float64]
 
-DEFAULT_QUANTITIES = ("energy", "heat_capacity")
 DEFAULT_POINTS = 101
-PER_KELVIN = (Measure.ENERGY_PER_KELVIN, Measure.OBSERVABLE_PER_KELVIN)
 
 
 def curve(
@@ -41,6 +45,7 @@ def curve(
     per_count: bool = False,
     energy_unit: str | None = None,
     beyond_reach: bool = False,
+    resamples: Resamples | None = None,
 ) -> xr.Dataset:
     """Quantities at temperatures that need not have been simulated.
 
@@ -64,13 +69,18 @@ def curve(
         Unit of the answers; the study's own by default.
     beyond_reach : bool
         Keep answers that the sampled energies do not support; they stay marked in ``within_reach``.
+    resamples : Resamples, optional
+        From :func:`reweight.draw_resamples`.  Intervals then have the shape of the resamples (and the scale of the
+        linear-response error), and biases are known.
 
     Returns
     -------
     xarray.Dataset
         On ``temperature``: for every quantity ``X``, ``X_standard_error``, ``X_interval`` (also on ``bound``),
-        ``X_within_reach`` and ``X_variance_share`` (also on ``run``: which run makes how much of the variance);
-        besides, ``effective_sample_size`` and ``within_reach`` (of all quantities asked).
+        ``X_degrees_of_freedom``, ``X_within_reach`` and ``X_variance_share`` (also on ``run``: which run makes how
+        much of the variance); with resamples, ``X_bias`` and ``X_block_sensitivity`` (also on ``block_length``:
+        standard error from blocks half and twice as long, over that from the blocks used); besides,
+        ``effective_sample_size`` and ``within_reach`` (of all quantities asked).
         Values out of reach are NaN.  Errors at neighbouring temperatures are strongly correlated: do not fit a
         curve to them as if they were independent.
 
@@ -103,68 +113,93 @@ def curve(
         given = np.atleast_1d(np.asarray(temperature, dtype=float))
     beta = combined.description.inverse_temperature(given)
     expressed = [presentation(combined, q, per_count=per_count, energy_unit=energy_unit) for q in quantities]
-    origin = _origin(combined, quantities, reference, beyond_reach=beyond_reach)
+    origin = origin_beta(combined, quantities, reference, beyond_reach=beyond_reach)
     evaluations = evaluate(combined, quantities, beta, reference=origin)
-    dataset = xr.Dataset(
-        coords={
-            "temperature": (
-                "temperature",
-                given,
-                temperature_attributes(combined.description.temperature_unit),
-            ),
-            "bound": ("bound", np.array(["lower", "upper"])),
-            "run": ("run", np.array([run.name for run in combined.runs])),
-        }
+    extra = (
+        [None] * len(evaluations)
+        if resamples is None
+        else ask_resamples(combined, resamples, evaluations, level, reference=origin)
     )
-    for evaluation, shown in zip(evaluations, expressed, strict=True):
+    variables: dict[str, tuple[Any, ...]] = {}
+    for evaluation, shown, drawn in zip(evaluations, expressed, extra, strict=True):
         quantity = evaluation.quantity
         keep = np.full(given.shape, True) if beyond_reach else evaluation.within_reach
-        value, error, half = (
-            np.where(keep, each * shown.factor, np.nan) for each in _numbers(evaluation, level)
+        error = evaluation.variance.standard_error
+        half = half_width(error, evaluation.variance.degrees_of_freedom, level)
+        interval = np.stack([evaluation.value - half, evaluation.value + half], axis=1)
+        value, error, lower, upper = (
+            np.where(keep, each * shown.factor, np.nan)
+            for each in (evaluation.value, error, *(interval if drawn is None else drawn.interval).T)
         )
-        long_name = quantity.long_name
-        if quantity.from_reference:
-            counted_from = significant(float(combined.description.temperature(origin)))
-            long_name += f", counted from {counted_from} {combined.description.temperature_label}".rstrip()
-        attributes = value_attributes(
-            quantity.label,
-            long_name,
-            shown.unit,
-            per=shown.per,
-            per_kelvin_unit=quantity.measure in PER_KELVIN,
-        )
+        long_name = counted_from(combined, quantity, origin)
+        attributes = shown.attributes(quantity, long_name)
         label = quantity.label
-        dataset[label] = ("temperature", value, attributes)
-        dataset[f"{label}_standard_error"] = ("temperature", error, error_attributes(attributes))
-        dataset[f"{label}_interval"] = (
+        variables[label] = ("temperature", value, attributes)
+        variables[f"{label}_standard_error"] = ("temperature", error, error_attributes(attributes))
+        variables[f"{label}_interval"] = (
             ("temperature", "bound"),
-            np.stack([value - half, value + half], axis=1),
+            np.stack([lower, upper], axis=1),
             error_attributes(attributes, level=level),
         )
-        dataset[f"{label}_within_reach"] = (
+        variables[f"{label}_degrees_of_freedom"] = (
+            "temperature",
+            np.where(keep, evaluation.variance.degrees_of_freedom, np.nan),
+            {"units": "1", "long_name": f"effective degrees of freedom of the error of the {long_name}"},
+        )
+        variables[f"{label}_within_reach"] = (
             "temperature",
             evaluation.within_reach,
             {"long_name": f"the sampled energies support the {quantity.long_name}"},
         )
-        dataset[f"{label}_variance_share"] = (
+        variables[f"{label}_variance_share"] = (
             ("run", "temperature"),
             np.where(keep, evaluation.variance.shares, np.nan),
             {"units": "1", "long_name": f"share of each run in the variance of the {quantity.long_name}"},
         )
-    dataset["effective_sample_size"] = (
+        if drawn is not None:
+            variables[f"{label}_bias"] = (
+                "temperature",
+                np.where(keep, drawn.bias * shown.factor, np.nan),
+                {**attributes, "long_name": f"bias of the {attributes['long_name']}, from resampling"},
+            )
+            variables[f"{label}_block_sensitivity"] = (
+                ("block_length", "temperature"),
+                np.where(keep, drawn.sensitivity, np.nan),
+                {
+                    "units": "1",
+                    "long_name": "standard error from other blocks over that from the blocks used",
+                },
+            )
+    variables["effective_sample_size"] = (
         "temperature",
         evaluations[0].effective_sample_size,
         {"units": "1", "long_name": "effective sample size, in independent samples"},
     )
     within = np.logical_and.reduce([evaluation.within_reach for evaluation in evaluations])
-    dataset["within_reach"] = (
+    variables["within_reach"] = (
         "temperature",
         within,
         {"long_name": "the sampled energies support every quantity asked"},
     )
-    dataset.attrs = {"title": combined.description.title, "level": level, "errors": "linear response"}
+    coordinates: dict[str, Any] = {
+        "temperature": (
+            "temperature",
+            given,
+            temperature_attributes(combined.description.temperature_unit),
+        ),
+        "bound": ["lower", "upper"],
+        "run": [run.name for run in combined.runs],
+    }
+    if resamples is not None:
+        coordinates["block_length"] = ["half", "twice"]
+    dataset = xr.Dataset(variables, coords=coordinates)
+    dataset.attrs = {
+        "title": combined.description.title,
+        "level": level,
+        **({"errors": "linear response"} if resamples is None else resample_attributes(resamples)),
+    }
     if not beyond_reach and not any(evaluation.within_reach.any() for evaluation in evaluations):
-        raise _out_of_reach(combined, given, [q.name for q in quantities], dataset)
+        raise out_of_reach(combined, given, [q.name for q in quantities], dataset)
     return dataset
 
 
@@ -201,50 +236,10 @@ def answer(
     outside = ~dataset["within_reach"].to_numpy()
     shown = dataset if np.ndim(temperature) else dataset.isel(temperature=0)
     if outside.any() and not beyond_reach:
-        raise _out_of_reach(
+        raise out_of_reach(
             combined, dataset["temperature"].to_numpy()[outside], [of], shown, np.size(temperature)
         )
     return shown
-
-
-def _origin(
-    combined: DensityOfStates, quantities: Sequence[Quantity], reference: float | None, *, beyond_reach: bool
-) -> float:
-    """Inverse temperature from which entropies and free energies are counted.
-
-    By default that of the coldest run at which they are supported: a difference is only supported if both ends are.
-    """
-    counted = [quantity for quantity in quantities if quantity.from_reference]
-    beta = combined.estimate.beta[combined.cold_to_hot]
-    if reference is not None:
-        beta = np.atleast_1d(combined.description.inverse_temperature(reference))
-    inside = np.full(beta.shape, True)
-    for quantity in counted:
-        inside &= judge(combined, quantity, beta)[0]
-    if reference is not None and not inside.any() and not beyond_reach:
-        raise _out_of_reach(
-            combined, np.array([reference]), [q.name for q in counted], None, what="the reference"
-        )
-    return float(beta[np.argmax(inside)])
-
-
-def _numbers(evaluation: Evaluation, level: float) -> tuple[Array, Array, Array]:
-    error = evaluation.variance.standard_error
-    return evaluation.value, error, half_width(error, evaluation.variance.degrees_of_freedom, level)
-
-
-def common_reach(combined: DensityOfStates, of: Sequence[str] = DEFAULT_QUANTITIES) -> Reach:
-    """Range over which all the quantities can be answered; NaN ends if there is none."""
-    ranges = [reach(combined, name) for name in of]
-    coldest = max(ranges, key=lambda r: np.inf if r.empty else r.lowest)
-    hottest = min(ranges, key=lambda r: -np.inf if r.empty else r.highest)
-    if coldest.empty or hottest.empty or coldest.lowest > hottest.highest:
-        return replace(coldest, lowest=np.nan, highest=np.nan)
-    return Reach(
-        lowest=coldest.lowest,
-        highest=hottest.highest,
-        limited_by=(coldest.limited_by[0], hottest.limited_by[1]),
-    )
 
 
 def temperature_grid(
@@ -269,7 +264,7 @@ def temperature_grid(
     if lowest is None or highest is None:
         within = common_reach(combined, of)
         if within.empty:
-            raise _out_of_reach(combined, combined.temperatures, list(of), None)
+            raise out_of_reach(combined, combined.temperatures, list(of), None)
         lowest = within.lowest if lowest is None else lowest
         # An infinite end has no equally spaced grid; the hottest simulated temperature closes it.
         finite = combined.temperatures[np.isfinite(combined.temperatures)]
@@ -281,33 +276,3 @@ def temperature_grid(
             "Without one of them, the end of the reach is taken."
         )
     return np.linspace(lowest, highest, points)
-
-
-def _out_of_reach(
-    combined: DensityOfStates,
-    outside: Array,
-    of: Sequence[str],
-    estimate: object,
-    asked: int | None = None,
-    what: str = "temperature",
-) -> OutOfReachError:
-    within = common_reach(combined, of)
-    unit = f" {combined.description.temperature_label}".rstrip()
-    names = " and ".join(of)
-    if within.empty:
-        return OutOfReachError(
-            f"the runs must support {names} somewhere; got too few independent samples for any temperature "
-            f"({within.limited_by[0]}). Sample longer, or ask beyond the reach to see an unsupported estimate.",
-            outside=outside,
-            estimate=estimate,
-        )
-    total = outside.size if asked is None else asked
-    return OutOfReachError(
-        f"{what} must lie in [{significant(within.lowest)}, {significant(within.highest)}]{unit}, the reach of these "
-        f"runs for {names}; got {significant(float(outside[0]))}{unit} ({outside.size} of {total} values are outside). "
-        f"At the cold end {within.limited_by[0]}; at the hot end {within.limited_by[1]}. Add a run there, or ask beyond "
-        "the reach to see an unsupported estimate.",
-        outside=outside,
-        reach=(within.lowest, within.highest),
-        estimate=estimate,
-    )

@@ -142,7 +142,7 @@ def _at(combined: DensityOfStates, bins: Bins, beta: float, level: float) -> tup
         inside = bins.of_node[:, None] == numbers
         return np.asarray(weight[:, None] * (inside - probability[numbers]))
 
-    spread = variance(bin_blocks(combined, bins, direct))
+    spread = variance(bin_blocks(combined, bins, direct), coupled=combined.description.exchange)
     return (
         probability,
         spread.standard_error,

@@ -5,7 +5,7 @@ Shape letters: K runs, B leaves of a run, Q nodes, T temperatures.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -18,7 +18,7 @@ from reweight.quantities.quantity import Quantity
 from reweight.uncertainty.influence import block_sums, influence
 from reweight.uncertainty.window import Variance, variance
 
-__all__ = ["Evaluation", "evaluate", "values"]
+__all__ = ["Evaluation", "evaluate", "moments_at", "reference_beta", "values"]
 
 Array = NDArray[np.float64]
 
@@ -67,18 +67,16 @@ class Piece:
     carriers: Array
 
 
-def _pieces(combined: DensityOfStates, beta: Array) -> list[Array]:
-    at_once = max(1, NODES_AT_ONCE // combined.estimate.energies.size)
-    return [beta[start : start + at_once] for start in range(0, beta.size, at_once)]
-
-
-def _moments(combined: DensityOfStates, beta: Array) -> Moments:
-    return Moments(combined.estimate.canonical(beta), combined.description.boltzmann_constant)
+def moments_at(combined: DensityOfStates, beta: Array, numbers: int = NODES_AT_ONCE) -> Iterator[Moments]:
+    """Moments at inverse temperatures, with at most so many numbers at a time."""
+    at_once = max(1, numbers // combined.estimate.energies.size)
+    for piece in (beta[start : start + at_once] for start in range(0, beta.size, at_once)):
+        yield Moments(combined.estimate.canonical(piece), combined.description.boltzmann_constant)
 
 
 def values(combined: DensityOfStates, quantity: Quantity, beta: Array) -> Array:
     """Values only, shape (T,)."""
-    return np.concatenate([quantity.value(_moments(combined, piece)) for piece in _pieces(combined, beta)])
+    return np.concatenate([quantity.value(moments) for moments in moments_at(combined, beta)])
 
 
 def evaluate(
@@ -94,10 +92,9 @@ def evaluate(
     """
     needs_reference = any(quantity.from_reference for quantity in quantities)
     if needs_reference:
-        beta = np.append(beta, _reference_beta(combined, reference))
+        beta = np.append(beta, reference_beta(combined, reference))
     gathered: list[list[Piece]] = [[] for _ in quantities]
-    for piece in _pieces(combined, beta):
-        moments = _moments(combined, piece)
+    for moments in moments_at(combined, beta):
         size = moments.canonical.effective_sample_size()
         ends = end_mass(moments.canonical)
         for place, quantity in enumerate(quantities):
@@ -112,16 +109,19 @@ def evaluate(
                 )
             )
     return [
-        _evaluation(quantity, beta, pieces, needs_reference)
+        _evaluation(quantity, beta, pieces, needs_reference, coupled=combined.description.exchange)
         for quantity, pieces in zip(quantities, gathered, strict=True)
     ]
 
 
-def _reference_beta(combined: DensityOfStates, reference: float | None) -> float:
+def reference_beta(combined: DensityOfStates, reference: float | None) -> float:
+    """Inverse temperature of reference: the one asked, or that of the coldest run."""
     return float(combined.estimate.beta.max()) if reference is None else reference
 
 
-def _evaluation(quantity: Quantity, beta: Array, pieces: list[Piece], needs_reference: bool) -> Evaluation:
+def _evaluation(
+    quantity: Quantity, beta: Array, pieces: list[Piece], needs_reference: bool, *, coupled: bool
+) -> Evaluation:
     """Join the pieces; the last inverse temperature is the reference, if any quantity needs one."""
     value = np.concatenate([piece.value for piece in pieces])
     blocks = [
@@ -149,7 +149,7 @@ def _evaluation(quantity: Quantity, beta: Array, pieces: list[Piece], needs_refe
         beta=beta,
         value=value,
         blocks=blocks,
-        variance=variance(blocks),
+        variance=variance(blocks, coupled=coupled),
         effective_sample_size=size,
         end_mass=ends,
         carriers=carrying,

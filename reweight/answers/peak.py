@@ -2,42 +2,38 @@ r"""Peaks of any quantity: where, how high, how well known, and whether they sta
 
 A maximum of ``y(beta)`` satisfies ``y' = 0``.  Its position moves by ``-I_{y'} / y''`` and its height by ``I_y`` when a
 sample is added, with I the influence functions; derivatives are linear in y, so the block sums of ``y'`` are the same
-differences of block sums.  Nine-point differences on a scale of 0.08 standard deviations of the energy are exact to
-about 1e-8 of the width of anything a canonical curve can show.
+differences of block sums.
 
 Position and height do not depend on whether the curve is drawn against temperature or inverse temperature.
 """
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 from scipy.optimize import minimize_scalar
 
 from reweight.answers.evaluate import evaluate, values
-from reweight.answers.presentation import presentation
-from reweight.answers.reach import reach
+from reweight.answers.peak_resampling import FoundAgain, find_again
+from reweight.answers.presentation import Presentation, presentation
+from reweight.answers.resamples import resampled_on
+from reweight.answers.search import FIRST_DERIVATIVE, SECOND_DERIVATIVE, search_grid, search_limits, stencil
 from reweight.density_of_states import DensityOfStates
-from reweight.errors import InputError, OutOfReachError
 from reweight.quantities.quantity import Quantity
-from reweight.uncertainty.intervals import check_level, half_width
-from reweight.uncertainty.window import correlation, variance
+from reweight.uncertainty.intervals import check_level, half_width, rescaled_interval
+from reweight.uncertainty.resampling import Resamples
+from reweight.uncertainty.window import Variance, correlation, variance
 
 __all__ = ["Peak", "peaks"]
 
 Array = NDArray[np.float64]
 
-FIRST_DERIVATIVE = np.array([1 / 280, -4 / 105, 1 / 5, -4 / 5, 0, 4 / 5, -1 / 5, 4 / 105, -1 / 280])
-SECOND_DERIVATIVE = np.array([-1 / 560, 8 / 315, -1 / 5, 8 / 5, -205 / 72, 8 / 5, -1 / 5, 8 / 315, -1 / 560])
-STEP = 0.08
-
-GRID_STEP = 0.2  # in thermodynamic length: finer than anything a canonical curve can show
-MOST_GRID_POINTS = 4000
-
 # Among the several independent maxima that noise draws, three standard errors are passed in less than about 1 %.
 STANDS_OUT = 3.0
+
+FEWEST_FOUND = 20  # resamples with a maximum, for a bias to be told
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -52,15 +48,20 @@ class Peak:
         In the study's temperature unit.
     temperature_interval : tuple of float
     temperature_bias : float or None
-        Known only from resampling.
+        Known only from resampling, as the next bias and share.
     height, height_standard_error : float
     height_interval : tuple of float
+    height_bias : float or None
     unit : str
         Of the height.
     per : str or None
         What the height is per.
     correlation : float
-        Of the errors of position and height.
+        Of the errors of position and height; from the resamples, if there are any.
+    highest_share : float or None
+        Share of the resamples in which no other maximum is higher: how surely this is the highest.
+    found_share : float or None
+        Share of the resamples that have a maximum here at all.
     prominence : float
         How far the maximum rises above the higher of the two valleys beside it, in standard errors of that difference.
     stands_out : bool
@@ -82,9 +83,12 @@ class Peak:
     height: float
     height_standard_error: float
     height_interval: tuple[float, float]
+    height_bias: float | None
     unit: str
     per: str | None
     correlation: float
+    highest_share: float | None
+    found_share: float | None
     prominence: float
     stands_out: bool
     at_edge: bool
@@ -103,6 +107,8 @@ def peaks(
     per_count: bool = False,
     energy_unit: str | None = None,
     beyond_reach: bool = False,
+    resamples: Resamples | None = None,
+    resampled_intervals: bool = False,
 ) -> tuple[Peak, ...]:
     """Maxima of a quantity between two temperatures, most prominent first.
 
@@ -119,6 +125,10 @@ def peaks(
         As in :func:`reweight.curve`; they apply to the height.
     beyond_reach : bool
         Look outside the reach, too, if the limits ask for it.
+    resamples : Resamples, optional
+        From :func:`reweight.draw_resamples`: the peak is found again in each of them.
+    resampled_intervals : bool
+        Give intervals the shape of the resamples, too.
 
     Returns
     -------
@@ -135,72 +145,70 @@ def peaks(
     check_level(level)
     (quantity,) = combined.quantities([of])
     shown = presentation(combined, quantity, per_count=per_count, energy_unit=energy_unit)
-    cold, hot = _limits(combined, quantity, lowest, highest, beyond_reach=beyond_reach)
-    grid = _grid(combined, hot, cold)
+    cold, hot = search_limits(combined, quantity, lowest, highest, beyond_reach=beyond_reach, sought="peak")
+    grid = search_grid(combined, hot, cold)
     heights = values(combined, quantity, grid)
+    places = _maxima(heights)
+    again = {}
+    if resamples is not None:
+        interior = [place for place in places if place not in (0, grid.size - 1)]
+        (drawn,) = resampled_on(combined, resamples, [quantity], grid)
+        again = dict(zip(interior, find_again(grid, heights, drawn, interior), strict=True))
     found = []
-    for place in _maxima(heights):
+    for place in places:
         edge = place in (0, grid.size - 1)
         beta = float(grid[place]) if edge else _refined(combined, quantity, grid[place - 1], grid[place + 1])
         valley = float(grid[_key_valley(heights, place)])
-        found.append(
-            _peak(combined, quantity, beta, valley, edge, level, shown.factor, shown.unit, shown.per)
-        )
+        spread, peak = _peak(combined, quantity, beta, valley, edge, level, shown)
+        if place in again:
+            peak = _with_resamples(
+                combined, peak, spread, again[place], level, shown.factor, resampled_intervals
+            )
+        found.append(peak)
     return tuple(sorted(found, key=lambda peak: -peak.prominence))
 
 
-def _limits(
+def _with_resamples(
     combined: DensityOfStates,
-    quantity: Quantity,
-    lowest: float | None,
-    highest: float | None,
-    *,
-    beyond_reach: bool,
-) -> tuple[float, float]:
-    """Inverse temperatures between which to look: the reach, narrowed by what was asked (or replaced by it)."""
-    within = reach(combined, quantity.name)
-    if within.empty and not (beyond_reach and lowest is not None and highest is not None):
-        raise OutOfReachError(
-            f"the runs must support {quantity.name} somewhere to find its peak; got too few independent samples "
-            f"({within.limited_by[0]}). Sample longer.",
-            outside=combined.temperatures,
-        )
-    low = within.lowest if lowest is None else lowest
-    high = within.highest if highest is None else highest
-    if not low < high:
-        raise InputError(f"the lowest temperature must be below the highest; got {low:g} and {high:g}.")
-    if not beyond_reach:
-        low, high = max(low, within.lowest), min(high, within.highest)
-        if not low < high:
-            raise OutOfReachError(
-                f"a peak is looked for within [{within.lowest:.4g}, {within.highest:.4g}], the reach of these runs for "
-                f"{quantity.name}; got {lowest:g} to {highest:g}, which lies outside. Ask within it, or beyond the reach.",
-                outside=np.array([lowest, highest]),
-                reach=(within.lowest, within.highest),
-            )
-    cold, hot = combined.description.inverse_temperature([low, high])
-    return float(cold), float(hot)
-
-
-def _grid(combined: DensityOfStates, hot: float, cold: float) -> Array:
-    """Inverse temperatures fine enough to see every maximum, ascending.
-
-    The thermodynamic length of a step is at most ``sqrt(step * |change of the mean energy|)`` (Cauchy-Schwarz); steps
-    are halved until all are short.
-    """
-    estimate = combined.estimate
-    inner = estimate.beta[(estimate.beta > hot) & (estimate.beta < cold)]
-    grid = np.unique(np.concatenate([np.linspace(hot, cold, 65), inner]))
-    mean = estimate.canonical(grid).mean_energy
-    while grid.size < MOST_GRID_POINTS:
-        length = np.sqrt(np.diff(grid) * np.abs(np.diff(mean)))
-        long = np.flatnonzero(length > GRID_STEP)
-        if long.size == 0:
-            break
-        middle = (grid[long] + grid[long + 1]) / 2
-        mean = np.insert(mean, long + 1, estimate.canonical(middle).mean_energy)
-        grid = np.insert(grid, long + 1, middle)
-    return grid
+    peak: Peak,
+    spread: Variance,
+    again: FoundAgain,
+    level: float,
+    factor: float,
+    intervals: bool,
+) -> Peak:
+    """Add what resampling says."""
+    seen = np.isfinite(again.beta)
+    if seen.sum() < FEWEST_FOUND:
+        return replace(peak, highest_share=again.highest_share, found_share=float(seen.mean()))
+    moved = np.stack(
+        [
+            combined.description.temperature(again.beta[seen])
+            - float(combined.description.temperature(again.full_beta)),
+            (again.height[seen] - again.full_height) * factor,
+        ],
+        axis=1,
+    )
+    bias = moved.mean(axis=0)
+    varies = bool((np.ptp(moved, axis=0) > 0).all())
+    peak = replace(
+        peak,
+        temperature_bias=float(bias[0]),
+        height_bias=float(bias[1]),
+        correlation=float(np.corrcoef(moved[:, 0], moved[:, 1])[0, 1]) if varies else np.nan,
+        highest_share=again.highest_share,
+        found_share=float(seen.mean()),
+    )
+    if not intervals:
+        return peak
+    value = np.array([peak.temperature, peak.height])
+    error = np.array([peak.temperature_standard_error, peak.height_standard_error])
+    ends = rescaled_interval(value, value + moved, error, spread.degrees_of_freedom[:2], level)
+    return replace(
+        peak,
+        temperature_interval=(float(ends[0, 0]), float(ends[0, 1])),
+        height_interval=(float(ends[1, 0]), float(ends[1, 1])),
+    )
 
 
 def _maxima(heights: Array) -> list[int]:
@@ -225,14 +233,6 @@ def _key_valley(heights: Array, place: int) -> int:
     return max(valleys, key=lambda valley: heights[valley])
 
 
-def _stencil(combined: DensityOfStates, beta: float) -> tuple[Array, float]:
-    """Nine inverse temperatures around one, and their distance."""
-    canonical = combined.estimate.canonical(np.array([beta]))
-    deviation = float(np.sqrt(combined.estimate.weights[0] @ canonical.weighted_power(2))[0])
-    step = STEP / deviation
-    return np.asarray(beta + step * np.arange(-4, 5)), step
-
-
 def _refined(combined: DensityOfStates, quantity: Quantity, low: float, high: float) -> float:
     """Inverse temperature of the maximum between two grid points."""
     rough = minimize_scalar(
@@ -243,7 +243,7 @@ def _refined(combined: DensityOfStates, quantity: Quantity, low: float, high: fl
     )
     beta = float(rough.x)
     for _ in range(3):
-        points, step = _stencil(combined, beta)
+        points, step = stencil(combined, beta)
         y = values(combined, quantity, points)
         slope, curvature = FIRST_DERIVATIVE @ y / step, SECOND_DERIVATIVE @ y / step**2
         if curvature >= 0:
@@ -259,11 +259,10 @@ def _peak(
     valley: float,
     edge: bool,
     level: float,
-    factor: float,
-    unit: str,
-    per: str | None,
-) -> Peak:
-    points, step = _stencil(combined, beta)
+    shown: Presentation,
+) -> tuple[Variance, Peak]:
+    factor = shown.factor
+    points, step = stencil(combined, beta)
     (around,) = evaluate(combined, [quantity], np.append(points, valley))
     middle, last = 4, 9
     curvature = float(SECOND_DERIVATIVE @ around.value[:last] / step**2)
@@ -284,7 +283,8 @@ def _peak(
     if edge:  # no condition fixes the position
         for block in blocks:
             block[:, 0] = 0.0
-    spread = variance(blocks)
+    coupled = combined.description.exchange
+    spread = variance(blocks, coupled=coupled)
     error = spread.standard_error
     half = half_width(error, spread.degrees_of_freedom, level)
     rise = float(around.value[middle] - around.value[last])
@@ -293,7 +293,7 @@ def _peak(
     height = float(around.value[middle]) * factor
     height_half = float(half[1]) * abs(factor)
     position_error, position_half = (np.nan, np.nan) if edge else (float(error[0]), float(half[0]))
-    return Peak(
+    return spread, Peak(
         of=quantity.name,
         temperature=temperature,
         temperature_standard_error=position_error,
@@ -302,11 +302,14 @@ def _peak(
         height=height,
         height_standard_error=float(error[1]) * abs(factor),
         height_interval=(height - height_half, height + height_half),
-        unit=unit,
-        per=per,
+        height_bias=None,
+        unit=shown.unit,
+        per=shown.per,
         correlation=np.nan
         if edge
-        else float(correlation([b[:, :2] for b in blocks], spread.windows[:, :2])[0, 1]),
+        else float(correlation([b[:, :2] for b in blocks], spread.windows[:, :2], coupled=coupled)[0, 1]),
+        highest_share=None,
+        found_share=None,
         prominence=prominence,
         stands_out=bool(prominence >= STANDS_OUT and not edge),
         at_edge=edge,

@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 from reweight.density_of_states import DensityOfStates
 from reweight.errors import InputError
-from reweight.labels import energy_unit_label, per_temperature, product_unit
+from reweight.labels import energy_unit_label, per_temperature, product_unit, value_attributes
 from reweight.quantities.quantity import Measure, Quantity, Scaling
 from reweight.units import canonical_unit, energy_factor
 
@@ -25,11 +25,24 @@ class Presentation:
         UDUNITS spelling.
     per : str or None
         What an answer is per; None for totals and intensive quantities.
+    per_kelvin : bool
+        It is something over a temperature difference.
     """
 
     factor: float
     unit: str
     per: str | None
+    per_kelvin: bool
+
+    def attributes(self, quantity: Quantity, long_name: str | None = None) -> dict[str, str]:
+        """Attributes of the labelled values."""
+        return value_attributes(
+            quantity.label,
+            quantity.long_name if long_name is None else long_name,
+            self.unit,
+            per=self.per,
+            per_kelvin_unit=self.per_kelvin,
+        )
 
 
 def presentation(
@@ -54,14 +67,17 @@ def presentation(
         Measure.OBSERVABLE_ENERGY: (product_unit(own, energy_unit_label(asked)), conversion),
         Measure.NUMBER: ("1", 1.0),
     }[quantity.measure]
+    per_kelvin = quantity.measure in (Measure.ENERGY_PER_KELVIN, Measure.OBSERVABLE_PER_KELVIN)
     if not per_count or quantity.scaling is Scaling.INTENSIVE:
-        return Presentation(factor=factor, unit=unit, per=None)
+        return Presentation(factor=factor, unit=unit, per=None, per_kelvin=per_kelvin)
     if description.count is None:
         raise InputError(
             "answers per particle need the number of particles; the study declares none. "
             "Add count (and per, its name) to [system] and combine again."
         )
-    return Presentation(factor=factor / description.count, unit=unit, per=description.per)
+    return Presentation(
+        factor=factor / description.count, unit=unit, per=description.per, per_kelvin=per_kelvin
+    )
 
 
 def _observable_unit(combined: DensityOfStates, observable: str) -> str:

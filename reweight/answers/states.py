@@ -88,7 +88,7 @@ def states(
         reference = _reference(bins, visits)
         shift, common = -value[reference], [block[:, reference : reference + 1] for block in blocks]
     blocks = [block - part for block, part in zip(blocks, common, strict=True)]
-    spread = variance(blocks)
+    spread = variance(blocks, coupled=combined.description.exchange)
     half = half_width(spread.standard_error, spread.degrees_of_freedom, level)
     value = np.where(seen, value + shift, np.nan)
     return _labelled(

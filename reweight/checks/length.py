@@ -1,4 +1,4 @@
-"""Length: whether every run is long enough against its own correlation."""
+"""Length: whether every run holds enough independent samples, by the slower of two estimates of its correlation."""
 
 from __future__ import annotations
 
@@ -31,7 +31,7 @@ def _finding(run: RunRecord) -> Finding:
     factor = limit / independent
     summary = f"{run.name} holds {independent:.0f} independent samples"
     advice = "" if verdict is Verdict.SOUND else f"run it {factor:.1f} times as long"
-    if run.decision.inefficiency.constant:
+    if run.inefficiency.constant:
         summary = f"{run.name} never changes its energy"
         advice = "check that it was sampled at all; a frozen run tells only its ground level"
     return Finding(

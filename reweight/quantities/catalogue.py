@@ -3,16 +3,18 @@
 from __future__ import annotations
 
 import difflib
-from collections.abc import Callable, Iterable, Mapping
+from collections.abc import Callable, Iterable, Mapping, Sequence
 
 from reweight.errors import NotInFileError
 from reweight.quantities.energy import MeanEnergy
 from reweight.quantities.entropy import Entropy
+from reweight.quantities.fraction_above import FractionAbove
 from reweight.quantities.free_energy import FreeEnergy
 from reweight.quantities.heat_capacity import HeatCapacity
 from reweight.quantities.observable_mean import ObservableMean
 from reweight.quantities.observable_slope import ObservableCovariance, ObservableSlope
 from reweight.quantities.quantity import Quantity, Scaling
+from reweight.tally.nodes import Column
 
 __all__ = ["available", "named"]
 
@@ -26,29 +28,35 @@ OF_OBSERVABLE: tuple[Callable[[str, Scaling], Quantity], ...] = (
 SCALINGS = {"total": Scaling.EXTENSIVE, "per site": Scaling.INTENSIVE, "plain": Scaling.INTENSIVE}
 
 
-def available(normalisations: Mapping[str, str]) -> dict[str, Quantity]:
+def available(normalisations: Mapping[str, str], columns: Sequence[Column] = ()) -> dict[str, Quantity]:
     """Quantities by the name they are asked by.
 
     Parameters
     ----------
     normalisations : mapping
         From the names of the recorded observables to ``"total"``, ``"per site"`` or ``"plain"``.
+    columns : sequence of Column
+        What was tallied; some quantities exist only where their own column was.
     """
     quantities = [make() for make in OF_ENERGY]
     for observable, normalisation in normalisations.items():
         quantities += [make(observable, SCALINGS[normalisation]) for make in OF_OBSERVABLE]
+        own = [column for column in columns if column.observable == observable]
+        quantities += [FractionAbove(column) for column in own if column.above is not None]
     return {quantity.name: quantity for quantity in quantities}
 
 
-def named(names: Iterable[str], normalisations: Mapping[str, str]) -> list[Quantity]:
-    """Look quantities up.
+def named(
+    names: Iterable[str], normalisations: Mapping[str, str], columns: Sequence[Column] = ()
+) -> list[Quantity]:
+    """Look quantities up; parameters as of :func:`available`.
 
     Raises
     ------
     NotInFileError
         A name is not among those that can be asked; the error lists them.
     """
-    known = available(normalisations)
+    known = available(normalisations, columns)
     unknown = [name for name in names if name not in known]
     if unknown:
         near = difflib.get_close_matches(unknown[0].lower(), known, n=1, cutoff=0.4)

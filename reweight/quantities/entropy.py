@@ -28,7 +28,7 @@ class Entropy(Quantity):
     def value(self, moments: Moments) -> Array:
         """Return the entropy up to a constant."""
         canonical = moments.canonical
-        relative = canonical.log_partition + moments.beta * (canonical.mean_energy + moments[FIRST])
+        relative = moments.log_partition + moments.beta * (canonical.mean_energy + moments[FIRST])
         return np.asarray(moments.boltzmann_constant * relative)
 
     def gradient(self, moments: Moments) -> dict[Moment, Array]:

@@ -58,13 +58,21 @@ class Moments:
         """The number c: mean energy on the study's scale, shape (T,)."""
         return self.canonical.mean_energy + self.canonical.estimate.assembly.reference
 
+    @property
+    def log_partition(self) -> Array:
+        """``ln Z`` for energies relative to the reference, up to a common constant."""
+        return self.canonical.log_partition
+
+    def average(self, moment: Moment) -> Array:
+        """Average of a moment that is one."""
+        return self.canonical.estimate.column(moment.column) @ self.canonical.weighted_power(moment.power)
+
     def __getitem__(self, moment: Moment) -> Array:
         if moment not in self._known:
             if moment == LOG_PARTITION:
                 # On the study's scale: energies were taken relative to the reference.
                 shift = self.beta * self.canonical.estimate.assembly.reference
-                self._known[moment] = self.canonical.log_partition - shift
+                self._known[moment] = self.log_partition - shift
             else:
-                column = self.canonical.estimate.column(moment.column)
-                self._known[moment] = column @ self.canonical.weighted_power(moment.power)
+                self._known[moment] = self.average(moment)
         return self._known[moment]

@@ -18,9 +18,10 @@ from reweight.reading.ledger import FileLedger
 from reweight.reading.netcdf import NETCDF_MAGICS, NetcdfTable
 from reweight.reading.source import Table, first_bytes, refusal
 from reweight.reading.text import TextTable
+from reweight.reading.times import Timekeeper
 from reweight.study import Format, Run, Study
 
-__all__ = ["READERS", "FileLedger", "Table", "open_table", "resolve_columns", "run_chunks"]
+__all__ = ["READERS", "FileLedger", "Table", "Timekeeper", "open_table", "resolve_columns", "run_chunks"]
 
 READERS: Mapping[str, Callable[[Path, Format], Table]] = {
     "netcdf": NetcdfTable,
@@ -50,7 +51,9 @@ def open_table(path: Path, declared: Format) -> Table:
     return READERS[_content(path)](path, declared)
 
 
-def run_chunks(study: Study, run: Run, ledgers: list[FileLedger]) -> Iterator[NDArray[np.float64]]:
+def run_chunks(
+    study: Study, run: Run, ledgers: list[FileLedger], timekeeper: Timekeeper | None = None
+) -> Iterator[NDArray[np.float64]]:
     """Read a run, its files one after the other.
 
     Parameters
@@ -60,6 +63,8 @@ def run_chunks(study: Study, run: Run, ledgers: list[FileLedger]) -> Iterator[ND
         One of the study's.
     ledgers : list of FileLedger
         Gets one entry a file.
+    timekeeper : Timekeeper, optional
+        Gets the times, if the study says in which column they are; they are checked in any case.
 
     Yields
     ------
@@ -70,14 +75,18 @@ def run_chunks(study: Study, run: Run, ledgers: list[FileLedger]) -> Iterator[ND
     Raises
     ------
     DataFileError
-        A file cannot be read without changing a number, or lacks a column.
+        A file cannot be read without changing a number, lacks a column, or its times do not rise in equal steps.
     StudyError
         The study does not say which of several columns is the energy.
     """
+    timekeeper = timekeeper or Timekeeper()
     for file in run.files:
         table = open_table(study.data_path(file), study.format)
         sums = _columns_to_sum(study, table)
-        read = sorted({column for summed in sums for column in summed})
+        time = (
+            () if study.columns.time is None else resolve_columns(table, study.columns.time, "columns.time")
+        )
+        read = sorted({column for summed in (*sums, time) for column in summed})
         places = [[read.index(column) for column in summed] for summed in sums]
         ledger = FileLedger(file)
         ledgers.append(ledger)
@@ -88,6 +97,8 @@ def run_chunks(study: Study, run: Run, ledgers: list[FileLedger]) -> Iterator[ND
                     rows[:, quantity] = sum(chunk[:, column] for column in summed)
                 rows[:, 0] *= study.system.energy_multiplier
             _refuse_overflow(table.path, rows, ledger)
+            if time:
+                timekeeper.add(chunk[:, read.index(time[0])], table.path, ledger.rows_read - len(chunk) + 1)
             if ledger.first_energy is None:
                 ledger.first_energy = float(rows[0, 0])
             ledger.last_energy = float(rows[-1, 0])

@@ -17,7 +17,9 @@ from pydantic import BaseModel
 from pydantic_core import ErrorDetails
 
 from reweight import units
+from reweight.errors import InputError
 from reweight.study.schema import Columns, Conditions, Format, Observable, Run, Study, System
+from reweight.study.values import amount_and_unit
 
 __all__ = ["Problem", "disagreements", "not_built_yet", "translated"]
 
@@ -28,12 +30,8 @@ Location = tuple[str | int, ...]
 _NOT_BUILT_YET: tuple[tuple[str, object], ...] = (
     ("conditions.pressure", None),
     ("conditions.degrees_of_freedom", 0),
-    ("conditions.exchange", False),
-    ("columns.time", None),
-    ("columns.time_unit", None),
     ("columns.volume", None),
     ("columns.temperature", None),
-    ("observables.*.above", None),
     ("observables.*.bins", None),
     ("report", None),
 )
@@ -125,6 +123,10 @@ def disagreements(study: Study, values: Mapping[str, Any]) -> Iterator[Problem]:
         if not (name.isidentifier() and name.isascii()) or name == "energy":
             text = 'must be named with letters, digits and "_", not beginning with a digit, and not "energy"'
             yield _problem(("observables", name), text, values)
+    clock = {"time": study.columns.time, "time_unit": study.columns.time_unit}
+    for missing, given in (("time", "time_unit"), ("time_unit", "time")):
+        if clock[missing] is None and clock[given] is not None:
+            yield _problem(("columns", missing), f"must be given, because columns.{given} is", values)
     if not study.used_runs:
         yield _problem(("run",), "must have at least one run with use = true; all are left out", values)
     first_with_name: dict[str, int] = {}
@@ -157,6 +159,20 @@ def _run_disagreements(run: Run, study: Study) -> Iterator[tuple[str, str]]:
             yield "temperature", f"must lie above absolute zero{zero}; got {run.temperature}"
         elif not math.isfinite(run.beta(study)):
             yield "temperature", f"must be large enough for 1 / (k_B T) to be a number; got {run.temperature}"
+    if isinstance(run.discard, str) and run.discard != "auto":
+        _, unit = amount_and_unit(run.discard)
+        clock = study.columns.time_unit
+        if unit != "%" and clock is None:
+            yield (
+                "discard",
+                f"as a time ({run.discard!r}) needs a clock: name the column of times and its unit under [columns], "
+                'time = "t" and time_unit = "ps", or give rows (500) or a percentage ("10 %")',
+            )
+        elif unit != "%" and clock is not None:
+            try:
+                units.time_factor(unit, clock)
+            except InputError as error:
+                yield "discard", f"must be a time of the study's clock; got {run.discard!r}: {error}"
     if not run.use and not run.reason.strip():
         yield "reason", "must say why the run is left out, because use = false; it is printed and archived"
 

@@ -14,7 +14,6 @@ from typing import Annotated, Any, Literal
 from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, PrivateAttr, model_validator
 
 from reweight import units
-from reweight.errors import InputError
 from reweight.study.values import (
     CommentPrefixes,
     Delimiter,
@@ -22,6 +21,7 @@ from reweight.study.values import (
     Encoding,
     EnergyUnit,
     FileNames,
+    FiniteNumber,
     Line,
     Moments,
     Name,
@@ -31,8 +31,10 @@ from reweight.study.values import (
     PositiveInteger,
     PositiveNumber,
     RunName,
+    SingleColumn,
     SummedColumns,
     Temperature,
+    TimeUnit,
     TotalOrPer,
     Unit,
     base_and_power,
@@ -93,8 +95,8 @@ class Columns(_Table):
     """``[columns]``: which columns hold what; several energies are summed."""
 
     energy: SummedColumns | None = None
-    time: SummedColumns | None = None
-    time_unit: Unit | None = None
+    time: SingleColumn | None = None
+    time_unit: TimeUnit | None = None
     volume: SummedColumns | None = None
     temperature: SummedColumns | None = None
 
@@ -107,7 +109,7 @@ class Observable(_Table):
     normalisation: Normalisation = Field(default="plain", alias="is")
     moments: Moments = (1,)
     absolute: bool = False
-    above: float | None = None
+    above: FiniteNumber | None = None
     bins: Annotated[tuple[float, ...], BeforeValidator(listed)] | None = None
 
 
@@ -140,28 +142,6 @@ class Run(_Table):
         if math.isinf(self.temperature):
             return 0.0
         return 1.0 / (study.boltzmann_constant * units.to_kelvin(self.temperature, study.temperature_unit))
-
-    def discarded_rows(self, rows: int) -> int | None:
-        """Rows to leave out at the beginning of so many; None if the series is to decide.
-
-        Raises
-        ------
-        InputError
-            No row would be left.
-        """
-        if self.discard == "auto":
-            return None
-        discarded = (
-            self.discard
-            if isinstance(self.discard, int)
-            else math.ceil(rows * float(self.discard.strip(" %")) / 100)
-        )
-        if discarded >= rows:
-            raise InputError(
-                f"discard must leave rows over; got {self.discard} of {rows} rows (run {self.name!r}). "
-                "Discard fewer rows, or leave the run out with use = false."
-            )
-        return discarded
 
 
 class Study(_Table):

@@ -22,6 +22,7 @@ __all__ = [
     "Encoding",
     "EnergyUnit",
     "FileNames",
+    "FiniteNumber",
     "Moments",
     "Name",
     "Normalisation",
@@ -30,10 +31,13 @@ __all__ = [
     "PositiveInteger",
     "PositiveNumber",
     "RunName",
+    "SingleColumn",
     "SummedColumns",
     "Temperature",
+    "TimeUnit",
     "TotalOrPer",
     "Unit",
+    "amount_and_unit",
     "base_and_power",
     "listed",
 ]
@@ -41,6 +45,7 @@ __all__ = [
 ColumnList = tuple[str | int, ...]
 
 _LARGEST_MOMENT = 8
+_AMOUNT = re.compile(r"\s*([0-9]+(?:\.[0-9]*)?)\s*(%|[A-Za-zµμ]+)\s*")
 
 
 def _columns(value: object) -> ColumnList:
@@ -54,6 +59,13 @@ def _columns(value: object) -> ColumnList:
     if not entries or len(set(entries)) < len(entries):
         raise ValueError(f"must list each column to be summed once; got {value!r}")
     return tuple(entries)
+
+
+def _single_column(value: object) -> ColumnList:
+    """Check a column that is not summed."""
+    if isinstance(value, list):
+        raise ValueError(f"must be one column; got {value!r}")
+    return _columns(value)
 
 
 def listed(value: object) -> object:
@@ -97,6 +109,14 @@ def _any_unit(value: str) -> str:
     return value
 
 
+def _time_unit(value: str) -> str:
+    try:
+        units.time_factor(value, value)
+    except InputError as error:
+        raise ValueError(str(error).removeprefix("unit of time ")) from None
+    return value
+
+
 def number_of_states(value: str) -> str:
     """Check a number of states written as base^power."""
     # Two short whole numbers, so nothing has to be evaluated and no power of them is ever formed.
@@ -122,21 +142,30 @@ def _normalisation(value: object) -> object:
 
 
 def discarded_start(value: object) -> str | int:
-    """Check the beginning of a run that is left out: ``"auto"``, a number of rows or a percentage."""
+    """Check the beginning of a run that is left out: ``"auto"``, a number of rows, a percentage or a time."""
     if isinstance(value, int) and not isinstance(value, bool) and value >= 0:
         return value
     text = value if isinstance(value, str) else ""
     if text == "auto":
         return text
-    percentage = re.fullmatch(r"\s*([0-9]+(?:\.[0-9]*)?)\s*%\s*", text)
-    if percentage and float(percentage[1]) < 100:
-        return text
-    if re.fullmatch(r"\s*[0-9.]+\s*[A-Za-zµ]+\s*", text):
-        raise ValueError(
-            f"as a time ({text!r}) is known but this version cannot use it yet; "
-            'give rows (500) or a percentage ("10 %")'
-        )
-    raise ValueError(f'must be "auto", a number of rows or a percentage below 100 like "10 %"; got {value!r}')
+    if _AMOUNT.fullmatch(text):
+        amount, unit = amount_and_unit(text)
+        if unit == "%" and amount < 100:
+            return text
+        if unit != "%":
+            _time_unit(unit)
+            return text
+    raise ValueError(
+        'must be "auto", a number of rows, a percentage below 100 like "10 %" or a time like "20 ns"; '
+        f"got {value!r}"
+    )
+
+
+def amount_and_unit(text: str) -> tuple[float, str]:
+    """Split ``"10 %"`` or ``"20 ns"`` into number and unit."""
+    found = _AMOUNT.fullmatch(text)
+    assert found is not None  # checked when it was given
+    return float(found[1]), found[2]
 
 
 def _moments(value: object) -> tuple[int, ...]:
@@ -179,6 +208,12 @@ def _number_or_infinite(value: float) -> float:
     return value
 
 
+def _finite(value: float) -> float:
+    if not math.isfinite(value):
+        raise ValueError(f"must be finite; got {value}")
+    return value
+
+
 def _finite_and_not_negative(value: float) -> float:
     if not (math.isfinite(value) and value >= 0):
         raise ValueError(f"must be finite and not negative; got {value}")
@@ -195,11 +230,14 @@ Name = Annotated[str, AfterValidator(_plain_name)]
 Line = Annotated[str, AfterValidator(_one_line)]
 RunName = Annotated[str, AfterValidator(_run_name)]
 Unit = Annotated[str, AfterValidator(_any_unit)]
+TimeUnit = Annotated[str, AfterValidator(_time_unit)]
 EnergyUnit = Annotated[str, AfterValidator(_energy_unit)]
 PositiveInteger = Annotated[int, Field(gt=0)]
+FiniteNumber = Annotated[float, AfterValidator(_finite)]
 PositiveNumber = Annotated[float, AfterValidator(_finite_and_positive)]
 NotNegativeNumber = Annotated[float, AfterValidator(_finite_and_not_negative)]
 Temperature = Annotated[float, AfterValidator(_number_or_infinite)]
+SingleColumn = Annotated[ColumnList, PlainValidator(_single_column)]
 SummedColumns = Annotated[ColumnList, PlainValidator(_columns)]
 _TextList = Annotated[tuple[str, ...], BeforeValidator(listed)]
 TotalOrPer = Annotated[str, AfterValidator(_total_or_per)]

@@ -129,6 +129,8 @@ def column_values(
 ) -> NDArray[np.float64]:
     """Values of a tallied column for every row, shape (N,)."""
     values = rows[:, 1 + list(observables).index(column.observable)]
+    if column.above is not None:
+        return (values > column.above).astype(np.float64)
     if column.absolute:
         values = np.abs(values)
     return values if column.power == 1 else values**column.power

@@ -12,7 +12,7 @@ __all__ = ["COUNT", "Column", "Nodes"]
 
 @dataclass(frozen=True, slots=True)
 class Column:
-    """One tallied column: a power of an observable, or of its absolute value.
+    """One tallied column: a power of an observable, or of its absolute value, or whether it exceeds a value.
 
     Attributes
     ----------
@@ -20,11 +20,14 @@ class Column:
         Name; empty for the plain count.
     power : int
     absolute : bool
+    above : float or None
+        The column is 1 where the observable is greater than this, and 0 elsewhere.
     """
 
     observable: str = ""
     power: int = 0
     absolute: bool = False
+    above: float | None = None
 
 
 COUNT = Column()

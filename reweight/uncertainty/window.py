@@ -57,14 +57,19 @@ class Variance:
         return np.asarray(np.divide(self.by_run, total, out=np.zeros_like(self.by_run), where=total > 0))
 
 
-def variance(blocks: Sequence[Array]) -> Variance:
+def variance(blocks: Sequence[Array], *, coupled: bool = False) -> Variance:
     """Variance of each answer from the centred block sums of every run.
 
     Parameters
     ----------
     blocks : sequence of numpy.ndarray, shape (B, T)
         One a run; B may differ.
+    coupled : bool
+        Runs that moved together, as in replica exchange: their blocks cover the same times, and are added before anything
+        is squared.  A run's part of the variance is then its covariance with the sum, and may be negative.
     """
+    if coupled:
+        return _coupled_variance(blocks)
     parts = [_run_variance(block) for block in blocks]
     by_run = np.array([part for part, _ in parts])
     windows = np.array([window for _, window in parts])
@@ -73,6 +78,19 @@ def variance(blocks: Sequence[Array]) -> Variance:
     total = by_run.sum(axis=0)
     freedom = np.divide(total**2, spread, out=np.full(total.shape, np.inf), where=spread > 0)
     return Variance(by_run=by_run, windows=windows, degrees_of_freedom=freedom)
+
+
+def _coupled_variance(blocks: Sequence[Array]) -> Variance:
+    together = np.sum(blocks, axis=0)
+    whole = variance([together])
+    parts = np.array([np.einsum("bt,bt->t", block, together) for block in blocks])
+    square = parts.sum(axis=0)
+    shares = np.divide(parts, square, out=np.zeros_like(parts), where=square > 0)
+    return Variance(
+        by_run=shares * whole.total,
+        windows=np.repeat(whole.windows, len(blocks), axis=0),
+        degrees_of_freedom=whole.degrees_of_freedom,
+    )
 
 
 def _run_variance(blocks: Array) -> tuple[Array, NDArray[np.int64]]:
@@ -103,7 +121,7 @@ def _run_variance(blocks: Array) -> tuple[Array, NDArray[np.int64]]:
 FEWEST_SUMMED = 8  # blocks in the overlapping sums that correlate answers
 
 
-def correlation(blocks: Sequence[Array], windows: NDArray[np.int64]) -> Array:
+def correlation(blocks: Sequence[Array], windows: NDArray[np.int64], *, coupled: bool = False) -> Array:
     """Correlation matrix of the errors of several answers, positive by construction, shape (T, T).
 
     Rectangular windows differ from answer to answer and need not give a positive matrix; overlapping sums of
@@ -113,7 +131,11 @@ def correlation(blocks: Sequence[Array], windows: NDArray[np.int64]) -> Array:
     ----------
     blocks : sequence of numpy.ndarray, shape (B, T)
     windows : numpy.ndarray, shape (K, T)
+    coupled : bool
+        As in :func:`variance`.
     """
+    if coupled:
+        blocks, windows = [np.sum(blocks, axis=0)], windows[:1]
     answers = blocks[0].shape[1]
     total = np.zeros((answers, answers))
     for block, window in zip(blocks, windows, strict=True):
@@ -124,4 +146,4 @@ def correlation(blocks: Sequence[Array], windows: NDArray[np.int64]) -> Array:
         total += count / width * (sums.T @ sums / sums.shape[0]) / (1 - width / count)
     scale = np.sqrt(np.diag(total))
     scale[scale == 0] = 1.0
-    return np.asarray(total / scale / scale[:, None])
+    return np.asarray(total / np.outer(scale, scale))

@@ -75,7 +75,7 @@ def on_levels() -> rw.DensityOfStates:
         temperatures=[1.0, 1.3, 1.7],
         discard=MOST,
         states="3^20",
-        observables={"order": {"is": "total"}},
+        observables={"order": {"is": "total", "above": 0.3}},
     )
 
 

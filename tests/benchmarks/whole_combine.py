@@ -16,7 +16,7 @@ from gamma_study import energies, leaves_of, nodes_for, solved, temperatures
 from side_by_side import medians, say_rows, say_target, table_rows
 
 import reweight as rw
-from reweight.combining import decide
+from reweight.deciding import decide
 from reweight.files import hash_file
 from reweight.series.transient import transient_length
 

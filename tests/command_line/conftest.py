@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable
 from dataclasses import dataclass
 from pathlib import Path
@@ -9,8 +10,12 @@ from pathlib import Path
 import numpy as np
 import pytest
 
+import reweight as rw
 from reweight.cli.application import main
-from reweight.datasets.sampling import draw_gamma
+from reweight.datasets.exact import lattice_log_degeneracies
+from reweight.datasets.sampling import draw_gamma, draw_levels
+
+HOSTILE_NAMES = ("=2+3", "+1", "-1", "@cmd", 'quote" , comma', "<script>alert(1)", "Ωμέγα", "<b>&amp;")
 
 
 @dataclass(frozen=True)
@@ -78,3 +83,32 @@ def study(tmp_path: Path) -> Path:
 def combined(study: Path, reweight: Reweight) -> Path:
     assert reweight("combine", study).status == 0
     return study.with_suffix(".nc")
+
+
+@pytest.fixture(scope="session")
+def lattice_file(tmp_path_factory: pytest.TempPathFactory) -> Path:
+    """A combined file of the 8 x 8 lattice up to infinite temperature, its runs named to break things."""
+    levels, log_degeneracies = lattice_log_degeneracies(8)
+    temperatures = [1.7, 2.0, 2.2, 2.4, 2.8, 3.5, 6.0, math.inf]
+    rng = np.random.default_rng(51)
+    runs = {
+        name: draw_levels(levels, log_degeneracies, t, 4000, rng)
+        for name, t in zip(HOSTILE_NAMES, temperatures, strict=True)
+    }
+    combined = rw.combine(
+        runs,
+        temperatures=temperatures,
+        count=64,
+        per="site",
+        states="2^64",
+        title="=1+1 <script>alert('title')</script>",
+    )
+    path = tmp_path_factory.mktemp("lattice") / "lattice.nc"
+    rw.save(combined, path)
+    return path
+
+
+@pytest.fixture
+def hostile_names() -> tuple[str, ...]:
+    """Names of the lattice's runs."""
+    return HOSTILE_NAMES

@@ -62,6 +62,46 @@ def _far_apart(folder: Path) -> None:
         np.savetxt(folder / f"{name}.dat", rows, fmt=["%d", "%.6f"], header="step potential")
 
 
+def _timed(then: Break) -> Break:
+    """The column step is the clock."""
+
+    def spoil(folder: Path) -> None:
+        _replace("study.toml", "[columns]", '[columns]\ntime = "step"\ntime_unit = "step"')(folder)
+        then(folder)
+
+    return spoil
+
+
+def _exchanging(then: Break) -> Break:
+    def spoil(folder: Path) -> None:
+        _replace("study.toml", "[columns]", "[conditions]\nexchange = true\n[columns]")(folder)
+        then(folder)
+
+    return spoil
+
+
+def _retimed(folder: Path, times: np.ndarray) -> None:
+    rows = np.loadtxt(folder / "cold.dat")
+    rows[:, 0] = times
+    np.savetxt(folder / "cold.dat", rows, fmt=["%d", "%.8f"], header="step potential[kJ/mol]")
+
+
+def _slower(folder: Path) -> None:
+    times = np.arange(4000) * 10
+    _retimed(folder, np.where(times > 20_000, 20_000 + 1.4 * (times - 20_000), times))
+
+
+def _twice_as_slow(folder: Path) -> None:
+    _retimed(folder, np.arange(4000) * 2)
+
+
+def _swapped(folder: Path) -> None:
+    lines = (folder / "cold.dat").read_text().splitlines(keepends=True)
+    (folder / "first.dat").write_text("".join(lines[:2001]))
+    (folder / "cold.dat").write_text("".join([lines[0], *lines[2001:]]))
+    _replace("study.toml", '["cold.dat"]', '["cold.dat", "first.dat"]')(folder)
+
+
 STUDY_FAULTS: dict[str, tuple[Break, str]] = {
     "toml syntax": (_replace("study.toml", "schema = 1", "schema = = 1"), r"line 1"),
     "unknown key": (_replace("study.toml", "count = 20", "counts = 20"), r"system\.counts.*count"),
@@ -77,17 +117,65 @@ STUDY_FAULTS: dict[str, tuple[Break, str]] = {
     "no label": (_replace("study.toml", "temperature = 300.0", ""), r"run\[1\].*temperature"),
     "same name twice": (_replace("study.toml", 'name = "hot"', 'name = "cold"'), r"run.*name.*cold"),
     "feature of a later version": (
-        _replace("study.toml", "[columns]", "[conditions]\nexchange = true\n[columns]"),
-        r"conditions\.exchange.*cannot use it yet",
+        _replace("study.toml", "[columns]", '[conditions]\npressure = "1 bar"\n[columns]'),
+        r"conditions\.pressure.*cannot use it yet",
     ),
     "missing column": (_replace("study.toml", '"potential"', '"enthalpy"'), r"enthalpy.*step.*potential"),
     "left out without reason": (
         _replace("study.toml", 'name = "hot"', 'name = "hot"\nuse = false'),
         r"run\[2\].*reason",
     ),
+    "value to count above is not finite": (
+        _replace("study.toml", "[columns]", '[observables.q]\ncolumn = "step"\nabove = nan\n[columns]'),
+        r"observables\.q\.above must be finite; got nan",
+    ),
     "discards everything": (
         _replace("study.toml", 'name = "hot"', 'name = "hot"\ndiscard = 4000'),
         r"discard.*4000",
+    ),
+}
+
+CLOCK_FAULTS: dict[str, tuple[Break, str]] = {
+    "start as a time without a clock": (
+        _replace("study.toml", 'name = "hot"', 'name = "hot"\ndiscard = "20 ns"'),
+        r"run\[2\]\.discard .*needs a clock.*time_unit",
+    ),
+    "clock without a unit": (
+        _replace("study.toml", 'energy = "potential"', 'energy = "potential"\ntime = "step"'),
+        r"columns\.time_unit must be given",
+    ),
+    "column of times missing": (
+        _replace("study.toml", "[columns]", '[columns]\ntime = "t"\ntime_unit = "ps"'),
+        r"columns\.time must be a column.*step",
+    ),
+    "times that fall": (
+        _timed(_line(12, "3 1.5\n")),
+        r"cold\.dat, row 11: times must rise from row to row; got 3 after 9",
+    ),
+    "a row twice": (
+        _timed(_line(12, "9 1.5\n")),
+        r"cold\.dat, row 11: times must rise.*got 9 after 9.*written twice",
+    ),
+    "a row missing": (
+        _timed(_line(12, "")),
+        r"cold\.dat, row 11: times must rise in equal steps; got 11 after 9",
+    ),
+    "another interval from some row on": (
+        _timed(_slower),
+        r"cold\.dat, row \d+: times must rise in equal steps",
+    ),
+    "files in the wrong order": (_timed(_swapped), r"first\.dat, row 1: times must rise.*got 0 after 3999"),
+    "more time than there is": (
+        _timed(_replace("study.toml", 'name = "hot"', 'name = "hot"\ndiscard = "5000 step"')),
+        r"discard must leave.*'5000 step' of 4000 rows",
+    ),
+    "replica exchange of unequal lengths": (
+        _exchanging(_line(4001, "")),
+        r"same number of rows; got 3999 \(run 'cold'\) to 4000 \(run 'hot'\).*exchange = false",
+    ),
+    "replica exchange at unequal times": (
+        _exchanging(_timed(_twice_as_slow)),
+        r"equal times; got a row every 2 step \(run 'cold'\) and every 1 step \(run 'hot'\)",
     ),
 }
 
@@ -112,9 +200,9 @@ FILE_FAULTS: dict[str, tuple[Break, str]] = {
 }
 
 
-@pytest.mark.parametrize("name", [*STUDY_FAULTS, *FILE_FAULTS])
+@pytest.mark.parametrize("name", [*STUDY_FAULTS, *CLOCK_FAULTS, *FILE_FAULTS])
 def test_a_fault_is_refused_with_a_message_that_names_it(name, study, reweight):
-    spoil, expected = (STUDY_FAULTS | FILE_FAULTS)[name]
+    spoil, expected = (STUDY_FAULTS | CLOCK_FAULTS | FILE_FAULTS)[name]
     spoil(study.parent)
     before = sorted(study.parent.iterdir())
 
@@ -137,10 +225,43 @@ QUESTION_FAULTS = {
     "level in percent": (["curve", "FILE", "--level", "95"], r"level.*0\.95"),
     "single and range": (["curve", "FILE", "--at", "310", "--from", "300"], r"--at"),
     "unit of another kind": (["curve", "FILE", "--energy-unit", "ps"], r"ps"),
-    "errors not built yet": (["curve", "FILE", "--errors", "bootstrap"], r"cannot use it yet"),
+    "one resample": (["curve", "FILE", "--errors", "bootstrap", "--resamples", "1"], r"at least 2; got 1"),
+    "negative seed": (["curve", "FILE", "--errors", "bootstrap", "--seed", "-1"], r"seed.*-1"),
+    "resamples not drawn": (["curve", "FILE", "--save-resamples", "FOLDER/r.nc"], r"--errors bootstrap"),
     "picture of unknown kind": (["curve", "FILE", "--plot", "FOLDER/picture.gif"], r"\.png.*picture\.gif"),
     "output folder missing": (["curve", "FILE", "--csv", "FOLDER/nowhere/x.csv"], r"nowhere"),
     "peak outside the reach": (["peak", "FILE", "--from", "800", "--to", "900"], r"reach"),
+    "crossing without a value": (["crossing", "FILE", "--of", "energy"], r"--equals"),
+    "crossing of nothing": (["crossing", "FILE", "--equals", "1"], r"--of"),
+    "crossing of an unknown quantity": (
+        ["crossing", "FILE", "--of", "enthalpy", "--equals", "1"],
+        r"enthalpy",
+    ),
+    "value that is no number": (["crossing", "FILE", "--of", "energy", "--equals", "half"], r"half"),
+    "value that is not finite": (
+        ["crossing", "FILE", "--of", "energy", "--equals", "nan"],
+        r"equals must be finite; got nan",
+    ),
+    "value that is not taken": (
+        ["crossing", "FILE", "--of", "energy", "--equals", "1e4"],
+        r"equals must lie between .* kJ mol-1, the values that energy takes from .* K; got 10000.*hotter than",
+    ),
+    "crossing outside the reach": (
+        ["crossing", "FILE", "--of", "energy", "--equals", "77", "--from", "800", "--to", "900"],
+        r"a crossing is looked for within",
+    ),
+    "crossing with its level in percent": (
+        ["crossing", "FILE", "--of", "energy", "--equals", "77", "--level", "95"],
+        r"level.*0\.95",
+    ),
+    "crossing into a folder that is missing": (
+        ["crossing", "FILE", "--of", "energy", "--equals", "77", "--csv", "FOLDER/nowhere/x.csv"],
+        r"nowhere",
+    ),
+    "fraction above a value that was not declared": (
+        ["curve", "FILE", "--of", "energy.above"],
+        r"a quantity must be one of .*energy\.above",
+    ),
     "no such file": (["peak", "FOLDER/none.nc"], r"none\.nc"),
     "not a combined file": (["peak", "FOLDER/cold.dat"], r"combined file"),
 }

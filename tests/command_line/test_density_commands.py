@@ -13,10 +13,6 @@ import numpy as np
 import pytest
 
 import reweight as rw
-from reweight.datasets.exact import lattice_log_degeneracies
-from reweight.datasets.sampling import draw_levels
-
-HOSTILE_NAMES = ("=2+3", "+1", "-1", "@cmd", 'quote" , comma', "<script>alert(1)", "Ωμέγα", "<b>&amp;")
 
 
 def no_constants(text: str) -> dict[str, Any]:
@@ -33,29 +29,6 @@ def read_csv(path: Path) -> tuple[list[str], list[list[str]]]:
         header, *rows = csv.reader(stream)
     assert all(len(row) == len(header) for row in rows)
     return header, rows
-
-
-@pytest.fixture(scope="module")
-def lattice_file(tmp_path_factory: pytest.TempPathFactory) -> Path:
-    """A combined file of the 8 x 8 lattice up to infinite temperature, its runs named to break things."""
-    levels, log_degeneracies = lattice_log_degeneracies(8)
-    temperatures = [1.7, 2.0, 2.2, 2.4, 2.8, 3.5, 6.0, math.inf]
-    rng = np.random.default_rng(51)
-    runs = {
-        name: draw_levels(levels, log_degeneracies, t, 4000, rng)
-        for name, t in zip(HOSTILE_NAMES, temperatures, strict=True)
-    }
-    combined = rw.combine(
-        runs,
-        temperatures=temperatures,
-        count=64,
-        per="site",
-        states="2^64",
-        title="=1+1 <script>alert('title')</script>",
-    )
-    path = tmp_path_factory.mktemp("lattice") / "lattice.nc"
-    rw.save(combined, path)
-    return path
 
 
 def columns(table: str) -> list[list[str]]:
@@ -187,7 +160,7 @@ def test_a_distribution_out_of_reach_is_empty_counted_and_null(combined, reweigh
     assert shown["within_reach"] == [False]
 
 
-def test_an_infinite_temperature_is_told_from_a_missing_one_in_json(lattice_file, reweight):
+def test_an_infinite_temperature_is_told_from_a_missing_one_in_json(lattice_file, hostile_names, reweight):
     """JSON knows no infinity: the temperature is null, its inverse is 0."""
     record = no_constants(reweight("distribution", lattice_file, "--at", "2.5,inf", "--json").stdout)
 
@@ -196,10 +169,12 @@ def test_an_infinite_temperature_is_told_from_a_missing_one_in_json(lattice_file
     assert record["beta"] == [0.4, 0.0]
     assert record["within_reach"] == [True, True]
     assert sum(record["probability"][1]) == pytest.approx(1.0, abs=1e-12)
-    assert record["run"] == list(HOSTILE_NAMES)
+    assert record["run"] == list(hostile_names)
 
 
-def test_distribution_tables_hold_all_digits_and_hostile_names_do_nothing(lattice_file, tmp_path, reweight):
+def test_distribution_tables_hold_all_digits_and_hostile_names_do_nothing(
+    lattice_file, hostile_names, tmp_path, reweight
+):
     target = tmp_path / "distribution.csv"
     record = no_constants(
         reweight("distribution", lattice_file, "--at", "2.3,inf", "--csv", target, "--json").stdout
@@ -207,7 +182,7 @@ def test_distribution_tables_hold_all_digits_and_hostile_names_do_nothing(lattic
 
     header, rows = read_csv(target)
     assert header[3:5] == ["probability at 2.3 [1]", "probability_standard_error at 2.3 [1]"]
-    assert header[-len(HOSTILE_NAMES) :] == [f"run_histogram of {name} [1]" for name in HOSTILE_NAMES]
+    assert header[-len(hostile_names) :] == [f"run_histogram of {name} [1]" for name in hostile_names]
     assert not any(cell[:1] in ("=", "+", "@") for cell in header)
     for place, name in ((3, "probability"), (4, "probability_standard_error"), (-1, "run_histogram")):
         expected = record[name][-1 if place == -1 else 0]

@@ -68,6 +68,17 @@ def test_other_schemas_are_refused(head, key, text):
         ("[columns]\nenergy = []", "columns.energy", "each column to be summed once; got []"),
         ("[columns]\nenergy = [1, 1]", "columns.energy", "each column to be summed once"),
         ("[columns]\nenergy = 1.5", "columns.energy", "position counted from 1; got 1.5"),
+        ('[columns]\ntime = "t"', "columns.time_unit", "must be given, because columns.time is"),
+        ('[columns]\ntime_unit = "ps"', "columns.time", "must be given, because columns.time_unit is"),
+        ('[columns]\ntime = ["t", 1]\ntime_unit = "ps"', "columns.time", "must be one column; got ['t', 1]"),
+        ('[columns]\ntime = 0\ntime_unit = "ps"', "columns.time", "position counted from 1; got 0"),
+        (
+            '[columns]\ntime = 1\ntime_unit = "kJ"',
+            "columns.time_unit",
+            "must be a time, or one of step, sweep",
+        ),
+        ('[columns]\ntime = 1\ntime_unit = "pss"', "columns.time_unit", "Use a unit like ps, ns, step"),
+        ("[conditions]\nexchange = 1", "conditions.exchange", "must be true or false; got 1"),
         ("[observables.m]\nunit = '1'", "observables.m.column", "must be given"),
         (
             "[observables.m]\ncolumn = 1\nunit = 'a b/'",
@@ -90,6 +101,12 @@ def test_other_schemas_are_refused(head, key, text):
         ("[observables.energy]\ncolumn = 1", "observables.energy", 'not "energy"'),
         ('[observables."a b"]\ncolumn = 1', "observables.a b", "must be named with letters"),
         ("[observables.größe]\ncolumn = 1".replace("größe", '"größe"'), "observables.größe", "must be named"),
+        ("[observables.m]\ncolumn = 1\nabove = inf", "observables.m.above", "must be finite; got inf"),
+        (
+            "[observables.m]\ncolumn = 1\nabove = 'high'",
+            "observables.m.above",
+            "must be a number; got 'high'",
+        ),
         ("[observables.m]\ncolumm = 1\ncolumn = 1", "observables.m.columm", "Did you mean 'column'?"),
     ],
 )
@@ -130,7 +147,14 @@ def test_wrong_value_is_refused_with_its_key(lines, key, text):
         ("temperature = 1\nfiles = 'b'\ndiscard = -1", "discard", 'must be "auto", a number of rows'),
         ("temperature = 1\nfiles = 'b'\ndiscard = true", "discard", 'must be "auto", a number of rows'),
         ("temperature = 1\nfiles = 'b'\ndiscard = '100 %'", "discard", "percentage below 100"),
-        ("temperature = 1\nfiles = 'b'\ndiscard = '20 ns'", "discard", "('20 ns') is known but this version"),
+        ("temperature = 1\nfiles = 'b'\ndiscard = '20 sheep'", "discard", "known units; got 'sheep'"),
+        ("temperature = 1\nfiles = 'b'\ndiscard = '20 kJ'", "discard", "must be a time, or one of step"),
+        (
+            "temperature = 1\nfiles = 'b'\ndiscard = '20 ns'",
+            "discard",
+            "as a time ('20 ns') needs a clock: name the column of times and its unit under [columns], "
+            'time = "t" and time_unit = "ps"',
+        ),
         ("temperature = 1\nfiles = 'b'\ntemprature = 2", "temprature", "Did you mean 'temperature'?"),
     ],
 )
@@ -170,12 +194,8 @@ def test_at_least_one_run_is_needed():
     [
         ('[conditions]\npressure = "1 bar"', "conditions.pressure"),
         ("[conditions]\ndegrees_of_freedom = 3", "conditions.degrees_of_freedom"),
-        ("[conditions]\nexchange = true", "conditions.exchange"),
-        ('[columns]\ntime = "t"', "columns.time"),
-        ('[columns]\ntime_unit = "ps"', "columns.time_unit"),
         ('[columns]\nvolume = "V"', "columns.volume"),
         ('[columns]\ntemperature = "T"', "columns.temperature"),
-        ("[observables.m]\ncolumn = 1\nabove = 0.5", "observables.m.above"),
         ("[observables.m]\ncolumn = 1\nbins = [0.0, 1.0, 50]", "observables.m.bins"),
         ("[report]\nauthor = 'x'", "report"),
     ],
@@ -186,25 +206,32 @@ def test_keys_of_later_features_are_refused_by_name(lines, key):
     assert f"{key} is known but this version cannot use it yet; remove it." in str(error)
 
 
+def test_a_start_in_a_unit_that_the_clock_does_not_know_is_refused():
+    clock = '[columns]\ntime = 1\ntime_unit = "sweep"\n'
+    error = refused(f"{GOOD_HEAD}{clock}{GOOD_RUN}discard = '20 ns'\n")
+    assert error.key == "run[1].discard"
+    assert "must be a time of the study's clock; got '20 ns'" in str(error)
+
+
 def test_later_keys_at_the_value_that_asks_for_nothing_are_fine():
     parse_study(f"{GOOD_HEAD}[conditions]\nexchange = false\ndegrees_of_freedom = 0\n{GOOD_RUN}", folder=".")
 
 
 def test_all_problems_are_listed_at_once():
     error = refused(
-        'schema = 1\nenergy_unit = "eW"\n[system]\ncount = -1\n[conditions]\nexchange = true\n'
+        'schema = 1\nenergy_unit = "eW"\n[system]\ncount = -1\n[conditions]\npressure = "1 bar"\n'
         '[[run]]\nname = "x"\ntemperature = "hot"\nfiles = []\n'
     )
     assert str(error).startswith("study has 5 problems:\n")
     found = re.findall(r"^  (\S+)", str(error), flags=re.MULTILINE)
     assert found == [
-        "conditions.exchange",
+        "conditions.pressure",
         "energy_unit",
         "system.count",
         "run[1].temperature",
         "run[1].files",
     ]
-    assert error.key == "conditions.exchange"
+    assert error.key == "conditions.pressure"
 
 
 @pytest.mark.parametrize("hostile", ["two\\nlines", "a\\u202eb", "red \\u001b[31m"])

@@ -5,7 +5,7 @@ import math
 import pytest
 import scipy.constants
 
-from reweight.errors import InputError, StudyError
+from reweight.errors import StudyError
 from reweight.study import load_study, parse_study
 
 WHOLE = """
@@ -26,7 +26,7 @@ states = "2^256"
 ground_degeneracy = 2
 [conditions]
 degrees_of_freedom = 0
-exchange = false
+exchange = true
 [format]
 delimiter = "tab"
 decimal = ","
@@ -41,6 +41,7 @@ unit = "nm"
 is = "per atom"
 moments = [4, 1, 2]
 absolute = true
+above = 0.6
 [observables.area]
 column = 5
 [[run]]
@@ -73,13 +74,14 @@ def test_every_key_is_kept():
         "header": False,
         "encoding": "latin-1",
     }
+    assert study.conditions.exchange is True
     assert study.columns.energy == ("bonded", 3)
     assert list(study.observables) == ["order", "area"]
     order, area = study.observables.values()
     assert (order.column, order.unit, order.normalisation) == (("m",), "nm", "per site")
-    assert (order.moments, order.absolute) == ((1, 2, 4), True)
+    assert (order.moments, order.absolute, order.above) == ((1, 2, 4), True, 0.6)
     assert (area.column, area.unit, area.normalisation) == ((5,), "1", "plain")
-    assert (area.moments, area.absolute) == ((1,), False)
+    assert (area.moments, area.absolute, area.above) == ((1,), False, None)
     assert [run.name for run in study.runs] == ["cold", "660K"]
     assert [run.name for run in study.used_runs] == ["cold"]
     assert study.text == WHOLE
@@ -134,26 +136,22 @@ def test_boltzmann_constant_is_that_of_the_energy_unit():
     assert study.boltzmann_constant == pytest.approx(scipy.constants.k / scipy.constants.e, rel=1e-14)
 
 
-@pytest.mark.parametrize(
-    ("discard", "rows", "discarded"),
-    [
-        ('"auto"', 10, None),
-        ("0", 10, 0),
-        ("3", 10, 3),
-        ('"10 %"', 105, 11),
-        ('"12.5%"', 80, 10),
-        ('"0 %"', 5, 0),
-    ],
-)
-def test_discard_counts_rows_rounded_up(discard, rows, discarded):
-    study = study_of(run=f'temperature = 1\nfiles = "a"\ndiscard = {discard}')
-    assert study.runs[0].discarded_rows(rows) == discarded
+@pytest.mark.parametrize("discard", ['"20 ns"', '"0.5 ps"', '"3 µs"', '"20ns"'])
+def test_a_start_may_be_a_time_if_there_is_a_clock(discard):
+    study = study_of(
+        '[columns]\ntime = "t"\ntime_unit = "ps"', run=f'temperature = 1\nfiles = "a"\ndiscard = {discard}'
+    )
+    assert (study.columns.time, study.columns.time_unit) == (("t",), "ps")
+    assert study.runs[0].discard == discard.strip('"')
 
 
-def test_discarding_everything_is_refused():
-    study = study_of(run='temperature = 1\nfiles = "a"\ndiscard = 10')
-    with pytest.raises(InputError, match=r"must leave rows over; got 10 of 10 rows \(run 'a'\)"):
-        study.runs[0].discarded_rows(10)
+@pytest.mark.parametrize("unit", ["step", "sweep", "reduced"])
+def test_a_clock_may_count(unit):
+    study = study_of(
+        f'[columns]\ntime = 1\ntime_unit = "{unit}"',
+        run=f'temperature = 1\nfiles = "a"\ndiscard = "500 {unit}"',
+    )
+    assert study.columns.time_unit == unit
 
 
 def test_studies_cannot_be_changed():
