@@ -150,8 +150,8 @@ def peaks(
     heights = values(combined, quantity, grid)
     places = _maxima(heights)
     again = {}
-    if resamples is not None:
-        interior = [place for place in places if place not in (0, grid.size - 1)]
+    interior = [place for place in places if place not in (0, grid.size - 1)]
+    if resamples is not None and interior:
         (drawn,) = resampled_on(combined, resamples, [quantity], grid)
         again = dict(zip(interior, find_again(grid, heights, drawn, interior), strict=True))
     found = []

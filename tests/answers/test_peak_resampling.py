@@ -72,3 +72,10 @@ def test_spread_and_correlation_of_the_peak_agree_with_linear_response(lattice):
 def test_resamples_of_other_runs_are_refused(lattice, small_lattice):
     with pytest.raises(rw.InputError, match="of others"):
         rw.peaks(lattice, resamples=rw.draw_resamples(small_lattice, 10))
+
+
+def test_a_curve_without_an_interior_maximum_is_not_looked_for_again(oscillators):
+    (edge,) = rw.peaks(oscillators, of="energy", resamples=rw.draw_resamples(oscillators, 10))
+
+    assert edge.at_edge
+    assert edge.highest_share is None
