@@ -160,7 +160,7 @@ def curve(
             variables[f"{label}_bias"] = (
                 "temperature",
                 np.where(keep, drawn.bias * shown.factor, np.nan),
-                {**attributes, "long_name": f"bias of the {attributes['long_name']}, from resampling"},
+                shown.attributes(quantity, f"bias of the {long_name}, from resampling", linked=False),
             )
             variables[f"{label}_block_sensitivity"] = (
                 ("block_length", "temperature"),

@@ -34,15 +34,18 @@ class Presentation:
     per: str | None
     per_kelvin: bool
 
-    def attributes(self, quantity: Quantity, long_name: str | None = None) -> dict[str, str]:
-        """Attributes of the labelled values."""
-        return value_attributes(
+    def attributes(self, quantity: Quantity, long_name: str, *, linked: bool = True) -> dict[str, str]:
+        """Attributes of the labelled values, linked to the variables with their errors where these stand beside them."""
+        attributes = value_attributes(
             quantity.label,
-            quantity.long_name if long_name is None else long_name,
+            long_name,
             self.unit,
             per=self.per,
             per_kelvin_unit=self.per_kelvin,
         )
+        if not linked:
+            del attributes["ancillary_variables"]
+        return attributes
 
 
 def presentation(

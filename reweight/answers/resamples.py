@@ -245,7 +245,7 @@ def resampled(
         dataset[quantity.label] = (
             ("resample", "temperature"),
             value * shown.factor,
-            shown.attributes(quantity, counted_from(combined, quantity, origin)),
+            shown.attributes(quantity, counted_from(combined, quantity, origin), linked=False),
         )
     return dataset
 
