@@ -160,7 +160,10 @@ def curve(
             variables[f"{label}_bias"] = (
                 "temperature",
                 np.where(keep, drawn.bias * shown.factor, np.nan),
-                shown.attributes(quantity, f"bias of the {long_name}, from resampling", linked=False),
+                {
+                    **shown.attributes(quantity, long_name, linked=False),
+                    "long_name": f"bias of the {attributes['long_name']}, from resampling",
+                },
             )
             variables[f"{label}_block_sensitivity"] = (
                 ("block_length", "temperature"),
