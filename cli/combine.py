@@ -20,6 +20,7 @@ if TYPE_CHECKING:
 __all__ = ["combine", "run_combine"]
 
 FEW_RUNS = 4
+SUPPORTED = "these runs support heat capacities"
 MOST_CAUTIONS = 3
 
 
@@ -121,7 +122,7 @@ def _print(combined: DensityOfStates, found: list[Finding], target: Path) -> Non
     if len(concerns) > MOST_CAUTIONS:
         click.echo(f"and {screen.counted(len(concerns) - MOST_CAUTIONS, 'more finding')}; --json lists all")
     size = target.stat().st_size
-    reaches = any("support answers from" in line for line in headline)
+    reaches = headline[0].startswith(SUPPORTED)
     following = f"reweight curve {target} --plot curve.png" if reaches else f"reweight runs {target}"
     click.echo(f"{worst(found)}; wrote {target} ({size / 1e6:.2g} MB); next: {following}")
 
@@ -184,9 +185,8 @@ def _headline(combined: DensityOfStates) -> list[str]:
     if within.empty:
         return [f"these runs support no answers yet: {within.limited_by[0]}"]
     low, high = inside(within.lowest, within.highest)
-    lines = [
-        f"these runs support answers from {low} to {high} {unit}".rstrip() + _beyond_for_energies(combined)
-    ]
+    span = f"from {low} to {high} {unit}".rstrip()
+    lines = [f"{SUPPORTED} {span}{_beyond_for_energies(combined)}"]
     try:
         best = peaks(combined)[0]
     except OutOfReachError as error:
@@ -199,7 +199,7 @@ def _beyond_for_energies(combined: DensityOfStates) -> str:
     from reweight.notation import within
 
     ends = reach(combined, "energy")
-    return "" if ends.empty else " (mean energies: {} to {})".format(*within(ends.lowest, ends.highest))
+    return "" if ends.empty else ", mean energies from {} to {}".format(*within(ends.lowest, ends.highest))
 
 
 def _record(combined: DensityOfStates, found: list[Finding], target: Path) -> dict[str, Any]:

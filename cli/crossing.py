@@ -65,6 +65,7 @@ def crossing(
         screen.write_csv(
             csv, list(records[0]), [list(each.values()) for each in records], force=force, inputs=[file]
         )
+    screen.tell_written(csv, quiet=quiet)
     if as_json:
         records = [dataclasses.asdict(each) for each in found]
         screen.print_json(screen.envelope(combined, "crossing", level=level, units=units, crossings=records))

@@ -147,11 +147,14 @@ def curve(
         )
     else:
         _print(dataset)
+    screen.tell_written(covariance, save_resamples, csv, plot, quiet=quiet)
     _tell_resampling(dataset, quiet=quiet)
     outside = int((~dataset["within_reach"]).sum())
     screen.tell_outside(outside, dataset.sizes["temperature"], beyond=beyond_reach, quiet=quiet)
     if outside:
         _say_why(combined, dataset, of or DEFAULT_QUANTITIES, quiet=quiet)
+    outermost = dataset["extrapolated"] & dataset[_labels(dataset)[0]].notnull()
+    screen.tell_extrapolated(int(outermost.sum()), quiet=quiet)
 
 
 def _say_why(combined: DensityOfStates, dataset: xr.Dataset, names: Sequence[str], *, quiet: bool) -> None:
@@ -195,7 +198,7 @@ def _content(combined: DensityOfStates, dataset: xr.Dataset) -> dict[str, Any]:
         for part in (*parts, *RESAMPLED_PARTS):
             if label + part in dataset:
                 content[label + part] = dataset[label + part].to_numpy()
-    for name in ("effective_sample_size", "within_reach", "run"):
+    for name in ("effective_sample_size", "extrapolated", "within_reach", "run"):
         content[name] = dataset[name].to_numpy()
     for name in ("resamples", "disconnected_resamples"):
         if name in dataset.attrs:
@@ -226,7 +229,8 @@ def _tell_resampling(dataset: xr.Dataset, *, quiet: bool) -> None:
             f"  {name}: standard error from other blocks over that from the blocks used: {spans}", quiet=quiet
         )
         ratio = abs(dataset[f"{label}_bias"] / dataset[f"{label}_standard_error"])
-        notable = int((ratio > NOTABLE_BIAS).sum())
+        noise = 3 / dataset.attrs["resamples"] ** 0.5  # three standard errors of the bias itself
+        notable = int((ratio > max(NOTABLE_BIAS, noise)).sum())
         if notable:
             total = int(dataset[label].notnull().sum())
             screen.message(
@@ -282,13 +286,17 @@ def _numbers(dataset: xr.Dataset) -> tuple[list[str], list[list[Any]]]:
 
 
 def _print(dataset: xr.Dataset) -> None:
-    from reweight.notation import bracket, quantity_text
+    from reweight.notation import bracket, quantity_text, rounded
 
     labels = _labels(dataset)
     titles = [
         quantity_text(f"{dataset[label].attrs['long_name']}", "") + _in(dataset[label].attrs["units"])
         for label in labels
     ]
+    resampled = "resamples" in dataset.attrs
+    if resampled:
+        span = f"{100 * dataset.attrs['level']:g} % interval"
+        titles = [part for title in titles for part in (title, span)]
     rows = []
     for place, temperature in enumerate(dataset["temperature"].to_numpy()):
         cells = [f"{temperature:.6g}"]
@@ -297,6 +305,11 @@ def _print(dataset: xr.Dataset) -> None:
             error = float(dataset[f"{label}_standard_error"][place])
             mark = "" if bool(dataset[f"{label}_within_reach"][place]) else " !"
             cells.append("-" if value != value else bracket(value, error) + mark)
+            if resampled:
+                ends = dataset[f"{label}_interval"][place].to_numpy()
+                cells.append(
+                    "-" if value != value else " to ".join(rounded(float(end), error) for end in ends)
+                )
         cells.append(f"{float(dataset['effective_sample_size'][place]):.0f}")
         rows.append(cells)
     temperature_title = "temperature" + _in(dataset["temperature"].attrs["units"])

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import shutil
+import sys
 from pathlib import Path
 
 import click
@@ -48,9 +49,10 @@ def demo(folder: Path) -> None:
     picture = chain / "curves.png"
     save_figure(curve_figure(combined, curve(combined), peaks(combined)[:1]), picture)
     temperature = combined.temperatures.mean()
+    program = "reweight" if shutil.which("reweight") else sys.argv[0]  # the environment need not be activated
     click.echo(
         f"\ndrew {picture}\n\ntry next:\n"
-        f"  reweight curve {chain / 'study.nc'} --at {temperature:.0f} --per-count\n"
-        f"  reweight peak {chain / 'study.nc'} --json\n"
-        f"  reweight combine {folder / 'square-lattice' / 'study.toml'}   (its exact peak: T = 2.3175, C/N = 1.5522)"
+        f"  {program} curve {chain / 'study.nc'} --at {temperature:.0f} --per-count\n"
+        f"  {program} peak {chain / 'study.nc'} --json\n"
+        f"  {program} combine {folder / 'square-lattice' / 'study.toml'}   (its exact peak: T = 2.3175, C/N = 1.5522)"
     )

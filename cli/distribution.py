@@ -72,6 +72,7 @@ def distribution(
         screen.print_json(screen.envelope(combined, "distribution", level=level, units=units, **content))
     else:
         _print(dataset)
+    screen.tell_written(csv, plot, quiet=quiet)
     screen.tell_outside(
         int((~dataset["within_reach"]).sum()), len(temperatures), beyond=beyond_reach, quiet=quiet
     )

@@ -73,6 +73,7 @@ def peak(
         dataset = curve(combined, of=of, lowest=lowest, highest=highest, **asked)  # type: ignore[arg-type]
         marked = [each for each in found if each.stands_out]
         save_figure(curve_figure(combined, dataset, marked), plot, force=force, inputs=[file])
+    screen.tell_written(csv, plot, quiet=quiet)
     if as_json:
         units = {"temperature": combined.description.temperature_label or "1", "height": found[0].unit}
         records = [_record(each) for each in found]
@@ -153,8 +154,12 @@ def describe_peak(combined: DensityOfStates, found: Peak, level: float) -> list[
     from reweight.notation import bracket, quantity_text, rounded
 
     unit = combined.description.temperature_label
-    name = found.of.replace("_", " ") + (f" per {found.per}" if found.per else "")
+    name = found.of.replace("heat_capacity", "heat capacity") + (f" per {found.per}" if found.per else "")
     height = quantity_text(bracket(found.height, found.height_standard_error), found.unit)
+    if found.at_edge and found.prominence < 3:
+        return [
+            f"{name}: no maximum inside the searched range; it changes there by less than its errors tell"
+        ]
     if found.at_edge:
         at = quantity_text(f"{found.temperature:.6g}", unit)
         return [

@@ -47,6 +47,7 @@ def runs(
         from reweight.figures.style import save_figure
 
         save_figure(blocking_figure(combined, of), plot, force=force, inputs=[file])
+        screen.tell_written(plot, quiet=quiet)
     if as_json:
         units = {
             "energy": combined.description.energy_unit,
@@ -156,8 +157,9 @@ def runs_record(combined: DensityOfStates) -> list[dict[str, Any]]:
                     "by_series_standard_error": scales.series.standard_error,
                     "by_blocks": scales.blocks.value,
                     "by_blocks_standard_error": scales.blocks.standard_error,
-                    "integrated_autocorrelation_time": scales.slower.value / 2,
-                    "integrated_autocorrelation_time_standard_error": scales.slower.standard_error / 2,
+                    "integrated_autocorrelation_time_in_samples": scales.slower.value / 2,
+                    "integrated_autocorrelation_time_in_samples_standard_error": scales.slower.standard_error
+                    / 2,
                 }
                 for name, scales in run.time_scales.items()
             },

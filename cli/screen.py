@@ -34,7 +34,9 @@ __all__ = [
     "print_table",
     "progress_bar",
     "resamples_of",
+    "tell_extrapolated",
     "tell_outside",
+    "tell_written",
     "titled",
     "units_text",
     "write_csv",
@@ -103,6 +105,17 @@ def tell_outside(outside: int, total: int, *, beyond: bool, quiet: bool) -> None
     message(
         f"{outside} of {counted(total, 'temperature')} {what} for at least one quantity{hint}", quiet=quiet
     )
+
+
+def tell_extrapolated(number: int, *, quiet: bool) -> None:
+    """Caution against answers that are not between simulated temperatures, if there are any."""
+    if number:
+        lie = "lies" if number == 1 else "lie"
+        message(
+            f"caution: {counted(number, 'temperature')} {lie} at or beyond the outermost runs, where intervals cover 1 to 4 "
+            "points less than they say",
+            quiet=quiet,
+        )
 
 
 def print_table(
@@ -192,6 +205,13 @@ def progress_bar(what: str, total: int, *, quiet: bool) -> Iterator[Callable[[in
 def print_json(content: Mapping[str, Any]) -> None:
     """Print one JSON object."""
     click.echo(json.dumps(plain(content), indent=1, ensure_ascii=False, allow_nan=False))
+
+
+def tell_written(*paths: Path | None, quiet: bool) -> None:
+    """Tell which files were written."""
+    written = [str(path) for path in paths if path is not None]
+    if written:
+        message(f"wrote {', '.join(written)}", quiet=quiet)
 
 
 def write_csv(

@@ -63,6 +63,7 @@ def states(
         from reweight.figures.style import save_figure
 
         save_figure(states_figure(dataset), plot, force=force, inputs=[file])
+    screen.tell_written(csv, plot, quiet=quiet)
     if as_json:
         content = {
             str(name): dataset[name].to_numpy()

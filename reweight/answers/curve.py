@@ -16,6 +16,7 @@ from reweight.answers.support import (
     DEFAULT_QUANTITIES,
     common_reach,
     counted_from,
+    extrapolated,
     origin_beta,
     out_of_reach,
 )
@@ -80,7 +81,8 @@ def curve(
         ``X_degrees_of_freedom``, ``X_within_reach`` and ``X_variance_share`` (also on ``run``: which run makes how
         much of the variance); with resamples, ``X_bias`` and ``X_block_sensitivity`` (also on ``block_length``:
         standard error from blocks half and twice as long, over that from the blocks used); besides,
-        ``effective_sample_size`` and ``within_reach`` (of all quantities asked).
+        ``effective_sample_size``, ``extrapolated`` (at or beyond the outermost simulated temperatures, where
+        intervals cover 1 to 4 points less than they say) and ``within_reach`` (of all quantities asked).
         Values out of reach are NaN.  Errors at neighbouring temperatures are strongly correlated: do not fit a
         curve to them as if they were independent.
 
@@ -177,6 +179,11 @@ def curve(
         "temperature",
         evaluations[0].effective_sample_size,
         {"units": "1", "long_name": "effective sample size, in independent samples"},
+    )
+    variables["extrapolated"] = (
+        "temperature",
+        extrapolated(combined, beta),
+        {"long_name": "at or beyond the outermost simulated temperatures"},
     )
     within = np.logical_and.reduce([evaluation.within_reach for evaluation in evaluations])
     variables["within_reach"] = (

@@ -34,9 +34,7 @@ FEWEST_CARRIERS = {False: 20.0, True: 30.0}
 
 SEARCH_STEPS = 240
 BISECTIONS = 40
-OUTWARD = (
-    3.0  # how far beyond the simulated temperatures to look, in inverse standard deviations of the energy
-)
+OUTWARD = 10.0  # how far beyond the simulated temperatures to look, in inverse standard deviations of the energy
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -143,8 +141,8 @@ def reach(combined: DensityOfStates, of: str = "heat_capacity") -> Reach:
         np.concatenate(
             [
                 np.linspace(hot, cold, SEARCH_STEPS),
-                hot - np.linspace(0, OUTWARD / _deviation(estimate, hot), SEARCH_STEPS // 4),
-                cold + np.linspace(0, OUTWARD / _deviation(estimate, cold), SEARCH_STEPS // 4),
+                hot - np.linspace(0, OUTWARD / _deviation(estimate, hot), SEARCH_STEPS // 2),
+                cold + np.linspace(0, OUTWARD / _deviation(estimate, cold), SEARCH_STEPS // 2),
                 estimate.beta,
             ]
         )

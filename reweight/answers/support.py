@@ -14,7 +14,14 @@ from reweight.errors import OutOfReachError
 from reweight.notation import significant
 from reweight.quantities.quantity import Quantity
 
-__all__ = ["DEFAULT_QUANTITIES", "common_reach", "counted_from", "origin_beta", "out_of_reach"]
+__all__ = [
+    "DEFAULT_QUANTITIES",
+    "common_reach",
+    "counted_from",
+    "extrapolated",
+    "origin_beta",
+    "out_of_reach",
+]
 
 Array = NDArray[np.float64]
 
@@ -40,6 +47,16 @@ def origin_beta(
             combined, np.array([reference]), [q.name for q in counted], None, what="the reference"
         )
     return float(beta[np.argmax(inside)])
+
+
+def extrapolated(combined: DensityOfStates, beta: Array) -> NDArray[np.bool_]:
+    """Whether inverse temperatures lie at or beyond those of the outermost runs, shape (T,).
+
+    An end that needs no energies beyond the sampled ones is none: infinite temperature, say.
+    """
+    simulated = combined.estimate.beta
+    outside = (beta >= simulated.max()) | ((beta <= simulated.min()) & (beta > 0))
+    return np.asarray(outside)
 
 
 def counted_from(combined: DensityOfStates, quantity: Quantity, origin: float) -> str:

@@ -6,6 +6,7 @@ import difflib
 from collections.abc import Callable, Iterable, Mapping, Sequence
 
 from reweight.errors import NotInFileError
+from reweight.quantities.absolute_mean import AbsoluteMean
 from reweight.quantities.energy import MeanEnergy
 from reweight.quantities.entropy import Entropy
 from reweight.quantities.fraction_above import FractionAbove
@@ -42,6 +43,7 @@ def available(normalisations: Mapping[str, str], columns: Sequence[Column] = ())
     for observable, normalisation in normalisations.items():
         quantities += [make(observable, SCALINGS[normalisation]) for make in OF_OBSERVABLE]
         own = [column for column in columns if column.observable == observable]
+        quantities += [AbsoluteMean(c, SCALINGS[normalisation]) for c in own if c.absolute]
         quantities += [FractionAbove(column) for column in own if column.above is not None]
     return {quantity.name: quantity for quantity in quantities}
 

@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from reweight.quantities.moments import LOG_PARTITION, Moment, Moments
-from reweight.quantities.quantity import Array, Measure, Quantity
+from reweight.quantities.quantity import Array, Measure, Quantity, Scaling
 
 __all__ = ["FreeEnergy"]
 
@@ -20,6 +20,7 @@ class FreeEnergy(Quantity):
     label = "free_energy"
     long_name = "free energy over k_B T"
     measure = Measure.NUMBER
+    scaling = Scaling.EXTENSIVE
     from_reference = True
 
     def value(self, moments: Moments) -> Array:

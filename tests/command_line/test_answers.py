@@ -24,7 +24,7 @@ def test_the_first_screen_is_short_and_says_what_to_do_next(study, reweight):
     assert len(outcome.stdout.splitlines()) < 12
     assert "8,000 rows read from 2 files" in outcome.stdout
     assert re.search(r"one in [\d.]+\(\d+\)", outcome.stdout)
-    assert "these runs support answers from" in outcome.stdout
+    assert "these runs support heat capacities from" in outcome.stdout
     assert "next: reweight curve" in outcome.stdout
     for hidden in ("tally", "node", "panel"):
         assert hidden not in outcome.stdout

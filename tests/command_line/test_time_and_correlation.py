@@ -93,7 +93,7 @@ def test_correlation_of_observables_is_shown_beside_that_of_the_energy(observed:
     record = json.loads(reweight("runs", observed, "--json").stdout)["runs"][0]["correlation"]
     assert set(record) == {"energy", "quick", "slow"}
     for each in record.values():
-        shown = 2 * each["integrated_autocorrelation_time"]
+        shown = 2 * each["integrated_autocorrelation_time_in_samples"]
         assert shown == each["by_series"] or shown == each["by_blocks"] > 1.5 * each["by_series"]
         assert each["by_series_standard_error"] > 0
     assert record["slow"]["by_series"] > 30 * record["quick"]["by_series"]
