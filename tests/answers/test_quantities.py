@@ -222,7 +222,15 @@ LABELS = {
     "size.slope": ("size_slope", "nm K-1"),
     "size.covariance": ("size_covariance", "nm kJ mol-1"),
 }
-EXTENSIVE = {"energy", "heat_capacity", "entropy", "size.mean", "size.slope", "size.covariance"}
+EXTENSIVE = {
+    "energy",
+    "heat_capacity",
+    "entropy",
+    "free_energy",
+    "size.mean",
+    "size.slope",
+    "size.covariance",
+}
 
 
 def test_the_table_below_knows_every_quantity(oscillators) -> None:
@@ -321,3 +329,21 @@ def test_ln_z_is_a_moment_on_the_scale_of_the_study_not_of_its_reference_energy(
 
     assert LOG_PARTITION.power == -1
     assert float(free[1] - free[0]) == pytest.approx(4096.0 * (1 / 1.25 - 1.0), abs=1e-8)
+
+
+def test_the_absolute_mean_is_that_of_the_absolute_values() -> None:
+    """One run and no reweighting: the mean over the run itself; and only where the absolute value was kept."""
+    rng = np.random.default_rng(20240902)
+    energy, signed = rng.gamma(30.0, 1.0, 4000), rng.standard_normal(4000)
+    runs = {"a": {"energy": energy, "m": signed}}
+    combined = rw.combine(runs, temperatures=[1.0], discard=0, observables={"m": {"absolute": True}})
+
+    answer = rw.curve(combined, [1.0], of="m.absolute_mean")
+    assert answer["m_absolute_mean"].item() == pytest.approx(np.abs(signed).mean(), rel=1e-12)
+    assert "m.absolute_mean" not in rw.combine(runs, temperatures=[1.0], discard=0).quantity_names
+
+
+def test_answers_at_the_outermost_runs_and_beyond_are_said_to_be_extrapolated(oscillators) -> None:
+    answer = rw.curve(oscillators, [270.0, 280.0, 290.0, 344.0, 345.0, 350.0], beyond_reach=True)
+
+    assert answer["extrapolated"].values.tolist() == [True, True, False, False, True, True]
