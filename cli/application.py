@@ -6,6 +6,7 @@ not be trusted; 130 interrupted.
 
 from __future__ import annotations
 
+import errno
 import os
 import sys
 from collections.abc import Sequence
@@ -17,18 +18,25 @@ from reweight.cli.crossing import crossing
 from reweight.cli.curve import curve
 from reweight.cli.demo import demo
 from reweight.cli.distribution import distribution
+from reweight.cli.draft import draft
 from reweight.cli.explain import explain
 from reweight.cli.peak import peak
 from reweight.cli.runs import runs
 from reweight.cli.show import show
 from reweight.cli.states import states
 from reweight.errors import ReweightError
+from reweight.notation import printable
 from reweight.version import VERSION
 
 __all__ = ["application", "main"]
 
+CANNOT_PRINT = {errno.ENOSPC, errno.EDQUOT, errno.EFBIG, errno.EIO}  # files say so themselves
+
 SECTIONS = {
-    "Bring data in": (runs,),
+    "Bring data in": (
+        draft,
+        runs,
+    ),
     "Combine": (combine,),
     "Ask": (show, curve, peak, crossing, distribution, states),
     "Learn": (demo, explain),
@@ -78,20 +86,33 @@ def _status(arguments: list[str]) -> int:
         error.show()
         return error.exit_code
     except ReweightError as error:
-        click.echo(f"reweight: {error}", err=True)
+        _complain(str(error))
         return 2
     except (click.Abort, KeyboardInterrupt):
-        click.echo("reweight: interrupted; nothing was written", err=True)
+        _complain("interrupted; no file was left unfinished")
         return 130
     except BrokenPipeError:  # the reader of a pipe has seen enough
-        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        _forget_stdout()
         return 0
     except Exception as error:
+        if isinstance(error, OSError) and error.errno in CANNOT_PRINT:
+            _forget_stdout()
+            _complain(f"the answer cannot be printed; the system says: {error.strerror}. Free some space.")
+            return 2
         if "--debug" in arguments:
             raise
-        click.echo(
-            f"reweight: internal fault ({type(error).__name__}: {error}). This is a defect of the program; "
-            "reweight --debug COMMAND ... shows where.",
-            err=True,
+        _complain(
+            f"internal fault ({type(error).__name__}: {error}). This is a defect of the program; "
+            "reweight --debug COMMAND ... shows where."
         )
         return 1
+
+
+def _complain(text: str) -> None:
+    """Say on the error stream what is wrong, on its lines; file names in it may hold anything."""
+    click.echo("\n".join(map(printable, f"reweight: {text}".split("\n"))), err=True)
+
+
+def _forget_stdout() -> None:
+    """Let what is still to be printed vanish: the interpreter would try once more at its end."""
+    os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())

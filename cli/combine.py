@@ -5,11 +5,11 @@ from __future__ import annotations
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from pathlib import Path
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING
 
 import click
 
-from reweight.cli import options, screen
+from reweight.cli import ledger, options, screen
 from reweight.cli.peak import describe_extension, describe_peak
 from reweight.cli.runs import one_in, runs_record, runs_table
 
@@ -32,21 +32,45 @@ MOST_CAUTIONS = 3
 @click.option(
     "--workers", type=click.IntRange(1, 64), default=2, show_default=True, help="Files read at a time."
 )
+@click.option(
+    "--continue",
+    "earlier",
+    type=options.plain_path,
+    metavar="OLD.nc",
+    help="Read only what was added to the files since OLD.nc was made; it may be the output, too.",
+)
 @click.option("--json", "as_json", is_flag=True, help="Print JSON in place of the summary.")
 @click.option("--force", is_flag=True, help="Replace the output if it exists.")
 @click.option("--quiet", is_flag=True, help="No progress and no messages beside the summary.")
-def combine(study: Path, output: Path | None, workers: int, as_json: bool, force: bool, quiet: bool) -> None:
+def combine(
+    study: Path,
+    output: Path | None,
+    workers: int,
+    earlier: Path | None,
+    as_json: bool,
+    force: bool,
+    quiet: bool,
+) -> None:
     """Read the runs that STUDY describes, combine them, and write one file that answers every question.
 
     Ends with status 3 if the runs cannot be trusted: neighbours that hardly share energies, or runs too short
     against their own correlation.
     """
-    unsound = run_combine(study, output, workers=workers, as_json=as_json, force=force, quiet=quiet)
+    unsound = run_combine(
+        study, output, workers=workers, earlier=earlier, as_json=as_json, force=force, quiet=quiet
+    )
     click.get_current_context().exit(3 if unsound else 0)
 
 
 def run_combine(
-    study: Path, output: Path | None, *, workers: int, as_json: bool, force: bool, quiet: bool
+    study: Path,
+    output: Path | None,
+    *,
+    workers: int,
+    as_json: bool,
+    force: bool,
+    quiet: bool,
+    earlier: Path | None = None,
 ) -> bool:
     """Combine, save, print the summary; return whether the runs are unsound."""
     from reweight.checks.all_checks import findings
@@ -57,18 +81,31 @@ def run_combine(
     from reweight.study import load_study
 
     described = load_study(study)
+    ledger.tell_matches(described, quiet=quiet)
     target = study.with_suffix(".nc") if output is None else output
-    inputs = [study, *(described.data_path(file) for run in described.runs for file in run.files)]
+    inputs = [study, *map(described.data_path, described.files)]
+    force = force or (earlier is not None and _same_file(target, earlier))
     refuse_target(target, force=force, inputs=inputs)
-    with _progress(len(described.used_runs), quiet=quiet) as progress:
-        combined = combine_runs(described, workers=workers, progress=progress)
+    with _progress(len(described.used_runs) or len(described.replicas), quiet=quiet) as progress:
+        combined = combine_runs(
+            described,
+            workers=workers,
+            progress=progress,
+            continued=earlier,
+            tell=lambda text: screen.message(text, quiet=quiet),
+        )
     save(combined, target, force=force, inputs=inputs)
     found = findings(combined)
     if as_json:
-        screen.print_json(_record(combined, found, target))
+        record = screen.file_envelope(combined, "combine", file=str(target), runs=runs_record(combined))
+        screen.print_json(record)
     else:
         _print(combined, found, target)
     return worst(found) is Verdict.UNSOUND
+
+
+def _same_file(one: Path, other: Path) -> bool:
+    return one.exists() and other.exists() and one.samefile(other)
 
 
 @contextmanager
@@ -101,6 +138,7 @@ def _progress(runs: int, *, quiet: bool) -> Iterator[Callable[[str, int], None] 
 
 def _print(combined: DensityOfStates, found: list[Finding], target: Path) -> None:
     from reweight.checks.finding import Verdict, worst
+    from reweight.notation import printable
 
     description = combined.description
     title = description.title or "untitled study"
@@ -113,9 +151,8 @@ def _print(combined: DensityOfStates, found: list[Finding], target: Path) -> Non
         screen.print_table(*runs_table(combined, shown), indent=2)
     if len(shown) < len(combined.runs):
         click.echo(_in_short(combined, "the others: " if shown else ""))
-    click.echo(_account(combined))
     headline = _headline(combined)
-    for line in headline:
+    for line in [*_account(combined), *headline]:
         click.echo(line)
     for each in concerns[:MOST_CAUTIONS]:
         click.echo(f"{each.verdict}: {each.summary}; {each.advice}")
@@ -124,7 +161,7 @@ def _print(combined: DensityOfStates, found: list[Finding], target: Path) -> Non
     size = target.stat().st_size
     reaches = headline[0].startswith(SUPPORTED)
     following = f"reweight curve {target} --plot curve.png" if reaches else f"reweight runs {target}"
-    click.echo(f"{worst(found)}; wrote {target} ({size / 1e6:.2g} MB); next: {following}")
+    click.echo(printable(f"{worst(found)}; wrote {target} ({size / 1e6:.2g} MB); next: {following}"))
 
 
 def _runs_to_show(combined: DensityOfStates, concerns: list[Finding]) -> list[int]:
@@ -151,26 +188,16 @@ def _in_short(combined: DensityOfStates, prefix: str) -> str:
     return text
 
 
-def _account(combined: DensityOfStates) -> str:
-    files = [entry for run in combined.runs for entry in run.files]
-    kept, transient, replaced, dropped = (
-        sum(entry[part] for entry in files) for part in ("kept", "transient", "replaced", "dropped")
-    )
-    read = sum(entry["rows_read"] for entry in files)
-    text = f"{screen.counted(read, 'row')} read from {screen.counted(len(files), 'file')}"
-    text += f": {kept:,} kept, {transient:,} transient"
-    text += f", {replaced:,} replaced, {dropped:,} dropped" if replaced or dropped else ", none dropped"
-    text += "; one common start for the replica exchange" if combined.description.exchange else ""
-    for each in combined.left_out:
-        text += f"\nleft out: {each.name} ({each.reason})"
+def _account(combined: DensityOfStates) -> list[str]:
+    lines = [*ledger.account(combined), *ledger.runs_left_out(combined)]
     spacings = {run.tally.nodes.spacing for run in combined.runs} - {None}
     for spacing in spacings:
         assert spacing is not None
-        text += (
-            f"\nenergies were rounded in the files; moved to multiples of {spacing.step:g} from {spacing.offset:g} "
+        lines.append(
+            f"energies were rounded in the files; moved to multiples of {spacing.step:g} from {spacing.offset:g} "
             f"(by at most {spacing.largest_shift:.2g})"
         )
-    return text
+    return lines
 
 
 def _headline(combined: DensityOfStates) -> list[str]:
@@ -200,22 +227,3 @@ def _beyond_for_energies(combined: DensityOfStates) -> str:
 
     ends = reach(combined, "energy")
     return "" if ends.empty else ", mean energies from {} to {}".format(*within(ends.lowest, ends.highest))
-
-
-def _record(combined: DensityOfStates, found: list[Finding], target: Path) -> dict[str, Any]:
-    import dataclasses
-
-    return screen.envelope(
-        combined,
-        "combine",
-        level=None,
-        units={
-            "energy": combined.description.energy_unit,
-            "temperature": combined.description.temperature_unit,
-        },
-        file=str(target),
-        runs=runs_record(combined),
-        left_out=[dataclasses.asdict(each) for each in combined.left_out],
-        sharing=combined.sharing,
-        findings=[{**dataclasses.asdict(each), "verdict": str(each.verdict)} for each in found],
-    )

@@ -47,7 +47,7 @@ def crossing(
     """
     from reweight.answers.crossing import crossings
 
-    combined = screen.opened(file, quiet=quiet)
+    combined = screen.opened(file, quiet=quiet, outputs=(csv,), force=force)
     found = crossings(
         combined,
         of=of,

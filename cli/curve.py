@@ -81,7 +81,7 @@ def curve(
     from reweight.answers.curve import curve as ask
     from reweight.answers.support import DEFAULT_QUANTITIES
 
-    combined = screen.opened(file, quiet=quiet)
+    combined = screen.opened(file, quiet=quiet, outputs=(covariance, save_resamples, csv, plot), force=force)
     if "list" in of:
         listed = {each.name: each.long_name for each in combined.quantities(combined.quantity_names)}
         if as_json:
@@ -147,6 +147,11 @@ def curve(
         )
     else:
         _print(dataset)
+    for label in _labels(dataset):
+        if "comment" in dataset[label].attrs:
+            screen.message(
+                f"{dataset[label].attrs['long_name']}: {dataset[label].attrs['comment']}", quiet=quiet
+            )
     screen.tell_written(covariance, save_resamples, csv, plot, quiet=quiet)
     _tell_resampling(dataset, quiet=quiet)
     outside = int((~dataset["within_reach"]).sum())

@@ -22,26 +22,29 @@ def demo(folder: Path) -> None:
     FOLDER must not exist yet.  The runs were made by simulators of our own: a chain of beads that collapses on
     cooling, and a square lattice of two-state sites whose answers are known exactly.
     """
+    from reweight.datasets import SHIPPED, shipped
+    from reweight.files import new_folder
+
+    with new_folder(folder) as beside:
+        for name in SHIPPED:
+            (beside / name).mkdir()
+            for file in shipped(name).iterdir():
+                shutil.copyfile(file, beside / name / file.name)
+    try:
+        _whole_job(folder)
+    except BaseException:
+        shutil.rmtree(folder, ignore_errors=True)  # it was made just now, and another attempt needs the name
+        raise
+
+
+def _whole_job(folder: Path) -> None:
     from reweight.answers.curve import curve
     from reweight.answers.peak import peaks
-    from reweight.datasets import SHIPPED, shipped
-    from reweight.errors import OutputError
+    from reweight.datasets import SHIPPED
     from reweight.figures.curves import curve_figure
     from reweight.figures.style import save_figure
     from reweight.saving import open_combined
 
-    try:
-        folder.mkdir(parents=True)
-    except FileExistsError:
-        raise OutputError(
-            f"the demo needs a new folder; {str(folder)!r} exists. Name another: reweight demo NAME"
-        ) from None
-    except OSError as error:
-        raise OutputError(
-            f"the folder {str(folder)!r} cannot be made; the system says: {error.strerror}."
-        ) from error
-    for name in SHIPPED:
-        shutil.copytree(shipped(name), folder / name)
     chain = folder / "bead-chain"
     click.echo(f"copied {', '.join(SHIPPED)} to {folder}; combining {chain / 'study.toml'}:\n")
     run_combine(chain / "study.toml", None, workers=2, as_json=False, force=False, quiet=False)

@@ -42,7 +42,7 @@ def distribution(
     """
     from reweight.answers.distribution import distribution as ask
 
-    combined = screen.opened(file, quiet=quiet)
+    combined = screen.opened(file, quiet=quiet, outputs=(csv, plot), force=force)
     temperatures = options.flattened(at)
     if not temperatures:
         raise click.UsageError("--at must name at least one temperature.")

@@ -47,7 +47,7 @@ def peak(
     """
     from reweight.answers.peak import peaks
 
-    combined = screen.opened(file, quiet=quiet)
+    combined = screen.opened(file, quiet=quiet, outputs=(csv, plot), force=force)
     asked = {"per_count": per_count, "energy_unit": energy_unit, "level": level, "beyond_reach": beyond_reach}
     drawn = _drawn(combined, resamples, seed, needed=errors == "bootstrap", quiet=quiet)
     found = peaks(
@@ -154,7 +154,9 @@ def describe_peak(combined: DensityOfStates, found: Peak, level: float) -> list[
     from reweight.notation import bracket, quantity_text, rounded
 
     unit = combined.description.temperature_label
-    name = found.of.replace("heat_capacity", "heat capacity") + (f" per {found.per}" if found.per else "")
+    (quantity,) = combined.quantities([found.of])
+    name = quantity.long_name + (f" per {found.per}" if found.per else "")
+    remark = f"; {quantity.comment}" if quantity.comment else ""
     height = quantity_text(bracket(found.height, found.height_standard_error), found.unit)
     if found.at_edge and found.prominence < 3:
         return [
@@ -177,7 +179,7 @@ def describe_peak(combined: DensityOfStates, found: Peak, level: float) -> list[
     span = f"{100 * level:g} % interval"
     return [
         f"{name} peaks at {at}, {span} {low} to {high}",
-        f"  height {height}, {span} {bottom} to {top}",
+        f"  height {height}, {span} {bottom} to {top}{remark}",
         f"  correlation of the two errors {found.correlation:+.2f}; stands {found.prominence:.3g} standard errors "
         "above the valley beside it",
         *_describe_resampling(found),

@@ -7,7 +7,8 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
-from reweight.cli import options, screen
+from reweight.cli import ledger, options, screen
+from reweight.cli.replicas import print_replicas, replicas_record
 
 if TYPE_CHECKING:
     from reweight.density_of_states import DensityOfStates
@@ -41,7 +42,7 @@ def runs(
     FILE is a study (its files are read, nothing is written, and runs that share no energies are shown all the same)
     or a combined file.
     """
-    combined = _load(file, quiet=quiet)
+    combined = _load(file, plot, force=force, quiet=quiet)
     if plot is not None:
         from reweight.figures.blocking import blocking_figure
         from reweight.figures.style import save_figure
@@ -49,37 +50,31 @@ def runs(
         save_figure(blocking_figure(combined, of), plot, force=force, inputs=[file])
         screen.tell_written(plot, quiet=quiet)
     if as_json:
-        units = {
-            "energy": combined.description.energy_unit,
-            "temperature": combined.description.temperature_unit,
-        }
-        screen.print_json(
-            screen.envelope(
-                combined,
-                "runs",
-                level=None,
-                units=units,
-                runs=runs_record(combined),
-                sharing=combined.sharing,
-            )
-        )
+        content = {"runs": runs_record(combined), "replicas": replicas_record(combined)}
+        screen.print_json(screen.file_envelope(combined, "runs", **content))
         return
     header, rows = runs_table(combined, [int(place) for place in combined.cold_to_hot], energies=True)
     screen.print_table(header, rows)
-    for each in combined.left_out:
-        click.echo(f"left out: {each.name} ({each.reason})")
+    for line in [*ledger.account(combined), *ledger.runs_left_out(combined)]:
+        click.echo(line)
+    print_replicas(combined)
     if inputs:
         click.echo()
-        print_inputs(combined)
+        ledger.print_inputs(combined)
 
 
-def _load(file: Path, *, quiet: bool) -> DensityOfStates:
+def _load(file: Path, plot: Path | None, *, force: bool, quiet: bool) -> DensityOfStates:
     if file.suffix.lower() != ".toml":
-        return screen.opened(file, quiet=quiet)
+        return screen.opened(file, quiet=quiet, outputs=(plot,), force=force)
+    from reweight.files import refuse_target
     from reweight.studies import combine_study
     from reweight.study import load_study
 
-    return combine_study(load_study(file), connected=False)
+    described = load_study(file)
+    ledger.tell_matches(described, quiet=quiet)
+    if plot is not None:
+        refuse_target(plot, force=force, inputs=[file, *map(described.data_path, described.files)])
+    return combine_study(described, connected=False)
 
 
 def one_in(combined: DensityOfStates, place: int, of: str = "energy") -> str:
@@ -120,18 +115,21 @@ def runs_table(
         cells += (one_in(combined, place), f"{run.independent_samples:,.0f}")
         cells += tuple(one_in(combined, place, name) for name in few)
         if energies:
-            first, last = _ends(combined, place)
-            cells += (f"{first:.7g}", f"{last:.7g}")
+            cells += _ends(combined, place)
         cells += (screen.amount(combined.sharing[rank]) if rank < len(combined.sharing) else "",)
         rows.append(cells)
     return header, rows
 
 
-def _ends(combined: DensityOfStates, place: int) -> tuple[float, float]:
+def _ends(combined: DensityOfStates, place: int) -> tuple[str, str]:
+    """First and last energy of a run; nothing if its rows stood among those of others."""
     files = combined.runs[place].files
-    if not files:
-        return float("nan"), float("nan")
-    return float(files[0]["first_energy"]), float(files[-1]["last_energy"])
+    elsewhere = {
+        entry["path"] for run in combined.runs if run is not combined.runs[place] for entry in run.files
+    }
+    if not files or any(entry["path"] in elsewhere for entry in files):
+        return "", ""
+    return f"{files[0]['first_energy']:.7g}", f"{files[-1]['last_energy']:.7g}"
 
 
 def runs_record(combined: DensityOfStates) -> list[dict[str, Any]]:
@@ -167,30 +165,3 @@ def runs_record(combined: DensityOfStates) -> list[dict[str, Any]]:
         }
         for place, run in enumerate(combined.runs)
     ]
-
-
-def print_inputs(combined: DensityOfStates) -> None:
-    """Print the ledger: what became of every row of every file."""
-    header = (
-        "file",
-        "rows",
-        "kept",
-        "transient",
-        "replaced",
-        "dropped",
-        "first energy",
-        "last energy",
-        "sha256",
-    )
-    rows = [
-        (
-            entry["path"],
-            *(f"{entry[part]:,}" for part in ("rows_read", "kept", "transient", "replaced", "dropped")),
-            f"{entry['first_energy']:.7g}",
-            f"{entry['last_energy']:.7g}",
-            entry["sha256"],
-        )
-        for place in combined.cold_to_hot
-        for entry in combined.runs[place].files
-    ]
-    screen.print_table(header, rows)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import csv
+import hashlib
 import io
 import json
 import math
@@ -13,7 +14,8 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
-from reweight.files import write_text
+from reweight.files import refuse_contents, refuse_target, write_text
+from reweight.notation import printable
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -27,6 +29,7 @@ __all__ = [
     "counted",
     "echo_temperatures",
     "envelope",
+    "file_envelope",
     "message",
     "opened",
     "plain",
@@ -56,7 +59,7 @@ def titled(name: str, values: xr.DataArray) -> str:
 def message(text: str, *, quiet: bool = False) -> None:
     """Tell something that is not the answer."""
     if not quiet:
-        click.echo(text, err=True)
+        click.echo(printable(text), err=True)
 
 
 def counted(number: int, noun: str) -> str:
@@ -85,6 +88,8 @@ def units_text(description: Description) -> str:
     """Kind and units of a study's energies in words."""
     unit = description.temperature_label
     kind = f"{description.energy_kind} energies"
+    if description.pressure is not None:
+        kind = f"enthalpies ({description.energy_kind} energy + pV at {description.pressure})"
     return (
         f"{kind} in {description.energy_unit}, temperatures in {unit}" if unit else f"{kind}, reduced units"
     )
@@ -122,7 +127,7 @@ def print_table(
     header: Sequence[str], rows: Iterable[Sequence[str]], *, indent: int = 0, left: Sequence[int] = (0,)
 ) -> None:
     """Print columns under their headings, numbers to the right and the columns in `left` to the left."""
-    lines = [list(header), *(list(row) for row in rows)]
+    lines = [[printable(cell) for cell in row] for row in (header, *rows)]
     widths = [max(len(line[column]) for line in lines) for column in range(len(header))]
     for line in lines:
         cells = [
@@ -167,6 +172,27 @@ def envelope(
         "verdict": str(worst(findings(combined))),
         **content,
     }
+
+
+def file_envelope(combined: DensityOfStates, form: str, **content: Any) -> dict[str, Any]:
+    """Wrap what is said of a combined file as a whole: units, findings and runs left out belong to it."""
+    import dataclasses
+
+    from reweight.checks.all_checks import findings
+
+    return envelope(
+        combined,
+        form,
+        level=None,
+        units={
+            "energy": combined.description.energy_unit,
+            "temperature": combined.description.temperature_unit,
+        },
+        left_out=[dataclasses.asdict(each) for each in combined.left_out],
+        sharing=combined.sharing,
+        findings=[{**dataclasses.asdict(each), "verdict": str(each.verdict)} for each in findings(combined)],
+        **content,
+    )
 
 
 def resamples_of(combined: DensityOfStates, count: int, seed: int, *, quiet: bool) -> Resamples:
@@ -234,15 +260,30 @@ def _cell(value: Any) -> str:
     return f"'{text}" if text[:1] in ("=", "+", "-", "@") else text
 
 
-def opened(path: Path, *, quiet: bool) -> DensityOfStates:
-    """Open a combined file; say so once if its runs are not sound."""
+def opened(
+    path: Path, *, quiet: bool, outputs: Sequence[Path | None] = (), force: bool = False
+) -> DensityOfStates:
+    """Open a combined file; say so once if its runs are not sound; refuse what must not become an output."""
     from reweight.checks.all_checks import findings
     from reweight.checks.finding import Verdict
     from reweight.saving import open_combined
 
     combined = open_combined(path)
+    _refuse_outputs(combined, path, [each for each in outputs if each is not None], force=force)
     unsound = [finding for finding in findings(combined) if finding.verdict is Verdict.UNSOUND]
     if unsound:
         more = f" and {counted(len(unsound) - 1, 'more finding')}" if len(unsound) > 1 else ""
         message(f"unsound: {unsound[0].summary}{more}; {unsound[0].advice}", quiet=quiet)
     return combined
+
+
+def _refuse_outputs(combined: DensityOfStates, path: Path, outputs: Sequence[Path], *, force: bool) -> None:
+    """Refuse, before any work, names that are taken, named twice, or those of something the answers rest on."""
+    study = combined.study_text.encode()
+    inputs = {(int(each["size"]), str(each["sha256"])) for run in combined.runs for each in run.files}
+    inputs.add((len(study), hashlib.sha256(study).hexdigest()))
+    for place, output in enumerate(outputs):
+        refuse_target(output, force=force, inputs=[path])
+        refuse_contents(output, inputs)
+        if output in outputs[:place]:
+            raise click.UsageError(f"every output must have a name of its own; got {str(output)!r} twice.")

@@ -7,8 +7,8 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
-from reweight.cli import options, screen
-from reweight.cli.runs import print_inputs, runs_record
+from reweight.cli import ledger, options, screen
+from reweight.cli.runs import runs_record
 
 if TYPE_CHECKING:
     from reweight.answers.reach import Reach
@@ -33,7 +33,7 @@ def show(file: Path, inputs: bool, as_json: bool) -> None:
     _print(combined, reaches)
     if inputs:
         click.echo()
-        print_inputs(combined)
+        ledger.print_inputs(combined)
 
 
 def _print(combined: DensityOfStates, reaches: dict[str, Reach]) -> None:
@@ -60,6 +60,8 @@ def _print(combined: DensityOfStates, reaches: dict[str, Reach]) -> None:
     )
     temperatures = sorted(float(t) for t in combined.temperatures)
     click.echo(f"  {', '.join(f'{t:g}' for t in temperatures)} {unit}".rstrip())
+    for line in ledger.account(combined):
+        click.echo(f"  {line}")
     click.echo(
         f"  made by reweight {combined.provenance.get('version', '')}; energies kept as {_kept(combined)}"
     )
@@ -96,26 +98,16 @@ def _reach_cells(within: Reach) -> tuple[str, str, str, str]:
 def _record(combined: DensityOfStates, reaches: dict[str, Reach], *, inputs: bool) -> dict[str, Any]:
     import dataclasses
 
-    from reweight.checks.all_checks import findings
-
     runs = runs_record(combined)
     if not inputs:
         for run in runs:
             del run["files"]
-    return screen.envelope(
+    return screen.file_envelope(
         combined,
         "show",
-        level=None,
-        units={
-            "energy": combined.description.energy_unit,
-            "temperature": combined.description.temperature_unit,
-        },
         description=combined.description.as_dict(),
         runs=runs,
-        sharing=combined.sharing,
         reach={name: dataclasses.asdict(within) for name, within in reaches.items()},
-        findings=[{**dataclasses.asdict(each), "verdict": str(each.verdict)} for each in findings(combined)],
         choices=combined.choices(),
-        left_out=[dataclasses.asdict(each) for each in combined.left_out],
         made_by=combined.provenance,
     )

@@ -43,7 +43,7 @@ def states(
     """
     from reweight.answers.states import states as ask
 
-    combined = screen.opened(file, quiet=quiet)
+    combined = screen.opened(file, quiet=quiet, outputs=(csv, plot), force=force)
     dataset = ask(combined, bin_width=bin_width, absolute=absolute, level=level)
     if csv is not None:
         names = [

@@ -7,33 +7,33 @@ free energies solved for.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator, Sequence
+from collections.abc import Callable, Iterator, Mapping, Sequence
 from concurrent.futures import ThreadPoolExecutor
+from dataclasses import dataclass
 from itertools import chain
-from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
+from reweight.continuing import KnownRun
 from reweight.deciding import FEWEST_ROWS, decide
 from reweight.density_of_states import DensityOfStates, Description, LeftOut, RunRecord
 from reweight.errors import DisconnectedError, InputError, TooShortError
 from reweight.estimate import Estimate
 from reweight.memory import keep_freed_memory
 from reweight.multistate import Solution, cut_sharing, pairwise_start, solution_at, solve
+from reweight.reading import UnknownError
 from reweight.runs import Source
 from reweight.tally.assemble import Assembly
-from reweight.tally.levels import are_levels, find_spacing
-from reweight.tally.nodes import Nodes
-from reweight.tally.panels import panel_width
+from reweight.tally.nodes import FIRST_ROWS, Nodes, suitable_nodes
 from reweight.tally.run_tally import RunTally
+from reweight.units import REDUCED
 
 __all__ = ["Progress", "combine_sources", "estimate_of", "tally_sources", "weighted"]
 
 Array = NDArray[np.float64]
 
-FIRST_ROWS = 4096
-LARGEST_ENERGY = 1e60  # the reach asks for eighth powers, which must stay finite
+NO_ENERGIES: Array = np.empty(0)
 WORKERS = (
     1  # more do not help: sums hold the interpreter's lock, and files are read ahead and hashed beside it
 )
@@ -52,6 +52,8 @@ def combine_sources(
     connected: bool = True,
     workers: int = WORKERS,
     progress: Progress | None = None,
+    known: Mapping[str, KnownRun] | None = None,
+    tell: Callable[[str], None] = lambda _: None,
 ) -> DensityOfStates:
     """Tally all sources and combine them.
 
@@ -60,12 +62,18 @@ def combine_sources(
     connected : bool
         Refuse runs that share no energies; otherwise such runs are joined by pairwise estimates that mean nothing
         across the gap, for looking at the runs themselves.
+    known : mapping of str to KnownRun, optional
+        By run name, what an earlier combined file holds; of these runs only the rest is read.
+    tell : callable, optional
+        Called with the reason in words if known runs are read again all the same.
 
     Raises
     ------
     InputError, DisconnectedError, ConvergenceError
     """
-    tallies = tally_sources(sources, description, workers=workers, progress=progress)
+    read = _tallied(sources, description, known or {}, workers=workers, progress=progress, tell=tell)
+    sources = [source for source, _, _ in read]
+    tallies = [tally for _, _, tally in read]
     clocks = [source.clock() for source in sources]
     decided = decide(
         tallies,
@@ -82,11 +90,12 @@ def combine_sources(
             decision=decision,
             leaf_rows=rows,
             thinned=thinned,
-            files=_accounted(source.files(), int(rows[: decision.first_leaf].sum())),
+            files=source.files(int(rows[: decision.first_leaf].sum())),
             clock=clock,
+            first_energies=first_energies,
         )
-        for source, tally, clock, (decision, rows, thinned) in zip(
-            sources, tallies, clocks, decided.runs, strict=True
+        for (source, first_energies, tally), clock, (decision, rows, thinned) in zip(
+            read, clocks, decided.runs, strict=True
         )
     ]
     return DensityOfStates(
@@ -94,29 +103,48 @@ def combine_sources(
         runs=tuple(records),
         estimate=estimate_of(description, records, decided.assembly, connected=connected),
         left_out=tuple(left_out),
+        replicas=sources[0].replicas,
         study_text=study_text,
         provenance=provenance or {},
     )
 
 
-def _accounted(files: tuple[dict[str, Any], ...], transient: int) -> tuple[dict[str, Any], ...]:
-    """Ledger entries with the transient taken from the first rows kept."""
-    entries = []
-    for entry in files:
-        here = min(transient, entry["kept"])
-        transient -= here
-        entries.append({**entry, "kept": entry["kept"] - here, "transient": here})
-    return tuple(entries)
+def tally_sources(sources: Sequence[Source], description: Description) -> list[RunTally]:
+    """Read every source once, into tallies on nodes that suit all of them.
+
+    Raises
+    ------
+    InputError
+        No runs, or a run with too few rows.
+    """
+    read = _tallied(sources, description, {}, workers=WORKERS, progress=None, tell=lambda _: None)
+    return [tally for _, _, tally in read]
 
 
-def tally_sources(
+@dataclass(slots=True)
+class _Begun:
+    """A run of which the first rows were seen.
+
+    ``tally`` holds the rows of an earlier combined file, None without one; ``waiting`` are rows read and not yet tallied.
+    """
+
+    source: Source
+    first_energies: Array
+    waiting: list[Array]
+    stream: Iterator[Array]
+    tally: RunTally | None = None
+
+
+def _tallied(
     sources: Sequence[Source],
     description: Description,
+    known: Mapping[str, KnownRun],
     *,
-    workers: int = WORKERS,
-    progress: Progress | None = None,
-) -> list[RunTally]:
-    """Read every source once, into tallies on nodes that suit all of them.
+    workers: int,
+    progress: Progress | None,
+    tell: Callable[[str], None],
+) -> list[tuple[Source, Array, RunTally]]:
+    """Read every source once, into tallies on nodes that suit all of them; of known runs, only what is new.
 
     Raises
     ------
@@ -126,17 +154,29 @@ def tally_sources(
     if not sources:
         raise InputError("a study must have at least one run in use; got none.")
     keep_freed_memory()
-    streams = [source.chunks() for source in sources]
-    openings = [_opening(stream) for stream in streams]
-    nodes = _nodes([opening[:, 0] for opening in openings], np.array([s.beta for s in sources]), description)
-    observables = [each.name for each in description.observables]
+    begun = [_begun(source, known.get(source.name), tell) for source in sources]
+    nodes = suitable_nodes(
+        [each.first_energies for each in begun],
+        np.array([source.beta for source in sources]),
+        description.resolution,
+    )
+    unfit = next((each for each in known.values() if not each.nodes.collects_like(nodes)), None)
+    if unfit is not None:
+        tell(f"{_why_unfit(unfit.nodes, nodes, description)}: every file is read again from its start")
+        begun = [_from_start(source) for source in sources]
 
-    def read(source: Source, opening: Array, stream: Iterator[Array]) -> RunTally:
-        tally = RunTally(nodes, description.columns, observables)
-        for rows in chain([opening], stream):
-            tally.add(rows)
-            if progress is not None:
-                progress(source.name, rows.shape[0])
+    def read(run: _Begun, whole: Source) -> tuple[Source, Array, RunTally]:
+        source = run.source
+        columns, observables = description.columns, [each.name for each in description.observables]
+        tally = RunTally(nodes, columns, observables) if run.tally is None else run.tally.copied(nodes)
+        try:
+            for rows in chain(run.waiting, run.stream):
+                tally.add(rows)
+                if progress is not None:
+                    progress(source.name, rows.shape[0])
+        except UnknownError as error:
+            tell(_read_again(whole, error))
+            return read(_from_start(whole), whole)
         if progress is not None:
             progress(source.name, 0)
         if tally.row_count < FEWEST_ROWS:
@@ -145,48 +185,47 @@ def tally_sources(
                 "Sample longer, or leave the run out with use = false.",
                 run=source.name,
             )
-        return tally
+        return source, run.first_energies, tally
 
     if workers == 1:
-        return list(map(read, sources, openings, streams))
+        return list(map(read, begun, sources))
     with ThreadPoolExecutor(max_workers=workers) as pool:
-        return list(pool.map(read, sources, openings, streams))
+        return list(pool.map(read, begun, sources))
 
 
-def _opening(stream: Iterator[Array]) -> Array:
-    """First rows of a run: as many chunks as it takes to see enough of them."""
-    chunks: list[Array] = []
-    seen = 0
-    for rows in stream:
-        chunks.append(rows)
-        seen += rows.shape[0]
-        if seen >= FIRST_ROWS:
-            break
-    if not chunks:
-        return np.empty((0, 1))
-    return chunks[0] if len(chunks) == 1 else np.concatenate(chunks)
+def _begun(source: Source, known: KnownRun | None, tell: Callable[[str], None]) -> _Begun:
+    """Begin a run after the rows that are known."""
+    if known is None:
+        return _from_start(source)
+    try:
+        return _from_start(known.rest, known.first_energies, known.tally)
+    except UnknownError as error:
+        tell(_read_again(source, error))
+        return _from_start(source)
 
 
-def _nodes(openings: Sequence[Array], beta: Array, description: Description) -> Nodes:
-    first = [energies[:FIRST_ROWS] for energies in openings]
-    pooled = np.concatenate(first)
-    largest = float(np.abs(pooled).max(initial=0.0))
-    if largest > LARGEST_ENERGY:
-        raise InputError(
-            f"energies must be smaller than {LARGEST_ENERGY:g}; got {largest:g}. Check the unit."
+def _read_again(source: Source, reason: UnknownError) -> str:
+    return f"run {source.name!r} is read again from its start: {reason}"
+
+
+def _from_start(source: Source, first: Array = NO_ENERGIES, tally: RunTally | None = None) -> _Begun:
+    """Read the first rows of a source: as many chunks as it takes to have seen enough of them."""
+    stream = source.chunks()
+    waiting: list[Array] = []
+    while first.size < FIRST_ROWS and (rows := next(stream, None)) is not None:
+        waiting.append(rows)
+        first = np.concatenate([first, rows[:, 0]])
+    return _Begun(source, first[:FIRST_ROWS].copy(), waiting, stream, tally)
+
+
+def _why_unfit(before: Nodes, now: Nodes, description: Description) -> str:
+    if before.width != now.width:
+        unit = "" if description.energy_unit == REDUCED else f" {description.energy_unit}"
+        return (
+            f"energies must be kept on intervals of {now.width:g}{unit} now, not {before.width:g}{unit} (a run is "
+            "narrower than all before, temperatures lie further apart, or the resolution was changed)"
         )
-    spacing = find_spacing(pooled)
-    if spacing is not None:
-        first = [spacing.snap(energies) for energies in first]
-        pooled = np.concatenate(first)
-    deviations = [float(np.std(energies)) for energies in first if energies.size > 1]
-    gaps = np.diff(np.sort(beta))
-    width = panel_width(
-        min((each for each in deviations if each > 0), default=0.0),
-        float(gaps.max()) if gaps.size else 0.0,
-        description.resolution,
-    )
-    return Nodes(width, discrete=are_levels(np.unique(pooled).size, pooled.size), spacing=spacing)
+    return "the first energies of all runs are rounded in another way now"
 
 
 def estimate_of(

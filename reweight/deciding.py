@@ -18,6 +18,7 @@ from reweight.series.correlation import Inefficiency, shrink, statistical_ineffi
 from reweight.series.transient import transient_length
 from reweight.study.values import amount_and_unit
 from reweight.tally.assemble import Assembly, assemble
+from reweight.tally.leaves import LeafSums, ScatteredSums
 from reweight.tally.run_tally import RunTally
 from reweight.tally.thinned import Thinned
 
@@ -66,7 +67,7 @@ def decide(
     clocks = [None] * len(tallies) if clocks is None else clocks
     if exchange:
         _refuse_unequal(tallies, clocks, names)
-    completed = [tally.complete() for tally in tallies]
+    completed = [_completed(tally, name) for tally, name in zip(tallies, names, strict=True)]
     transients = [
         _transient(thinned, tally.row_count, discard, clock, name)
         for tally, (_, thinned), discard, clock, name in zip(
@@ -115,6 +116,13 @@ def decide(
 def first_leaf_after(leaf_rows: NDArray[np.int64], transient: int) -> int:
     """First leaf without a row of the transient."""
     return int(np.searchsorted(np.concatenate([[0], np.cumsum(leaf_rows)]), transient))
+
+
+def _completed(tally: RunTally, name: str) -> tuple[LeafSums | ScatteredSums, Thinned]:
+    try:
+        return tally.complete()
+    except InputError as error:
+        raise InputError(f"run {name!r}: {error}") from error
 
 
 def _transient(thinned: Thinned, rows: int, discard: int | str, clock: Clock | None, name: str) -> int:

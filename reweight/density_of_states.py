@@ -21,7 +21,9 @@ from reweight.clock import Clock
 from reweight.errors import InputError, NotInFileError
 from reweight.estimate import Estimate
 from reweight.quantities.catalogue import available, named
+from reweight.quantities.ensemble import Ensemble
 from reweight.quantities.quantity import Quantity
+from reweight.reading import ReplicaRecord
 from reweight.series.correlation import Inefficiency
 from reweight.series.time_scales import TimeScales, time_scales
 from reweight.study.values import base_and_power
@@ -70,8 +72,9 @@ class ObservableDescription:
 class Description:
     """What was simulated, in which units, and how runs are weighted.
 
-    ``exchange`` says that the runs are the temperatures of one replica exchange: coupled, of equal length, and with one
-    common start.
+    ``pressure`` (``"1 bar"``) says that the runs were at constant pressure and that their energies are enthalpies;
+    ``degrees_of_freedom`` counts the classical momenta that they leave out.  ``exchange`` says that the runs are the
+    temperatures of one replica exchange: coupled, of equal length, and with one common start.
     """
 
     title: str = ""
@@ -87,12 +90,21 @@ class Description:
     weighting: str = "independent"
     resolution: float | None = None
     exchange: bool = False
+    pressure: str | None = None
+    degrees_of_freedom: int = 0
     observables: tuple[ObservableDescription, ...] = ()
 
     @property
     def boltzmann_constant(self) -> float:
         """k_B in the energy unit per kelvin; 1 in reduced units."""
         return units.boltzmann_constant(self.energy_unit, self.temperature_unit)
+
+    @property
+    def ensemble(self) -> Ensemble:
+        """What was held in the runs."""
+        return Ensemble(
+            constant_pressure=self.pressure is not None, degrees_of_freedom=self.degrees_of_freedom
+        )
 
     @property
     def columns(self) -> tuple[Column, ...]:
@@ -203,6 +215,8 @@ class RunRecord:
         Ledger entries: path, sha256, rows read, first and last energy.
     clock : Clock or None
         Time between rows, if it is known.
+    first_energies : numpy.ndarray, shape (at most FIRST_ROWS,)
+        As they were read; the common nodes of all runs were decided from them.
     """
 
     name: str
@@ -213,6 +227,7 @@ class RunRecord:
     thinned: Thinned
     files: tuple[dict[str, Any], ...] = ()
     clock: Clock | None = None
+    first_energies: NDArray[np.float64] = field(default_factory=lambda: np.empty(0))
 
     @property
     def rows(self) -> int:
@@ -274,7 +289,7 @@ class LeftOut:
     """A run the study leaves out, and why."""
 
     name: str
-    beta: float
+    beta: float | None  # None if its rows are at several temperatures
     reason: str
 
 
@@ -291,6 +306,8 @@ class DensityOfStates:
     runs : tuple of RunRecord, length K
         In the order of the study.
     left_out : tuple of LeftOut
+    replicas : ReplicaRecord or None
+        How the replicas wandered, if the files of a replica exchange followed these.
     estimate : Estimate
         The array side of it.
     study_text : str
@@ -303,6 +320,7 @@ class DensityOfStates:
     runs: tuple[RunRecord, ...]
     estimate: Estimate
     left_out: tuple[LeftOut, ...] = ()
+    replicas: ReplicaRecord | None = None
     study_text: str = ""
     provenance: dict[str, str] = field(default_factory=dict)
 
@@ -329,7 +347,8 @@ class DensityOfStates:
         NotInFileError
             A name is not among those that can be asked.
         """
-        return named(names, self.description.normalisations, self.description.columns)
+        description = self.description
+        return named(names, description.normalisations, description.columns, description.ensemble)
 
     @property
     def quantity_names(self) -> tuple[str, ...]:
@@ -340,6 +359,12 @@ class DensityOfStates:
         """What somebody decided by hand, in words."""
         description = self.description
         made = []
+        if description.pressure is not None:
+            made.append(f"constant pressure, {description.pressure}: the energy is the enthalpy")
+        if description.degrees_of_freedom:
+            made.append(
+                f"heat capacity: includes {description.degrees_of_freedom} k_B / 2 from declared degrees of freedom"
+            )
         if description.weighting != "independent":
             made.append("weighting: all samples alike, not by statistical inefficiency")
         if description.exchange:

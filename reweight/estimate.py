@@ -155,6 +155,12 @@ class Estimate:
         return self.assembly.energies
 
     @cached_property
+    def _sampled(self) -> NDArray[np.bool_]:
+        """Nodes at whose energies there are rows in use, shape (Q,)."""
+        order = self.assembly.order
+        return np.repeat((self.weights[0].reshape(-1, order) != 0).any(axis=1), order)
+
+    @cached_property
     def hessian(self) -> Array:
         """Information matrix of the free energies, shape (K, K)."""
         return hessian(self.weights[0], self.solution.probabilities)
@@ -175,6 +181,7 @@ class Estimate:
     def canonical(self, beta: Array) -> Canonical:
         """Canonical weights at inverse temperatures, shape (T,)."""
         exponent = -self.solution.log_denominator[:, None] - self.energies[:, None] * beta
+        exponent[~self._sampled] = -np.inf  # far energies of a transient must not set the scale
         highest = exponent.max(axis=0)
         weights = np.exp(exponent - highest)
         total = self.weights[0] @ weights

@@ -10,14 +10,15 @@ import errno
 import hashlib
 import os
 import secrets
+import shutil
 import stat
-from collections.abc import Iterable, Iterator
-from contextlib import contextmanager
+from collections.abc import Collection, Iterable, Iterator
+from contextlib import contextmanager, suppress
 from pathlib import Path
 
 from reweight.errors import OutputError
 
-__all__ = ["hash_file", "refuse_target", "replacing", "write_text"]
+__all__ = ["hash_file", "new_folder", "refuse_contents", "refuse_target", "replacing", "write_text"]
 
 _NO_ROOM = {errno.ENOSPC, errno.EDQUOT, errno.EFBIG}
 
@@ -53,24 +54,60 @@ def replacing(
     refuse_target(target, force=force, inputs=protected)
     beside = target.with_name(f".reweight-{secrets.token_hex(6)}{target.suffix}")
     try:
-        # The mode leaves it to the umask who may read the output, as for any file the user writes.
-        os.close(os.open(beside, os.O_CREAT | os.O_EXCL | os.O_WRONLY, 0o666))
-    except OSError as error:
-        raise OutputError(_not_writable(target, error)) from error
-    try:
+        with _writing(target):
+            # The mode leaves it to the umask who may read the output, as for any file the user writes.
+            os.close(os.open(beside, os.O_CREAT | os.O_EXCL | os.O_WRONLY, 0o666))
         yield beside
-        _force_to_disk(beside)
+        with _writing(target):
+            _force_to_disk(beside)
         refuse_target(target, force=force, inputs=protected)  # something may have appeared meanwhile
-        try:
+        with _writing(target):
             os.replace(beside, target)
-        except OSError as error:
-            raise OutputError(_not_writable(target, error)) from error
     except BaseException as error:
-        beside.unlink(missing_ok=True)
-        if isinstance(error, OSError) and error.errno in _NO_ROOM:
+        # What the system refuses to do for a name that is too long, it refuses here, too.
+        with suppress(OSError):
+            beside.unlink()
+        if _lacks_room(error):
             raise OutputError(_not_writable(target, error)) from error
         raise
     _force_to_disk(target.parent)
+
+
+@contextmanager
+def new_folder(path: str | os.PathLike[str]) -> Iterator[Path]:
+    """Make a folder with all that is in it, or none.
+
+    Parameters
+    ----------
+    path : path
+        Final name; nothing of that name exists, missing folders above it are made.
+
+    Yields
+    ------
+    pathlib.Path
+        Empty folder beside it, to be filled by the caller.  It takes the final name when the block ends without an
+        exception and is removed otherwise.
+
+    Raises
+    ------
+    OutputError
+        The name exists or cannot be made, or the disk is full.
+    """
+    target = Path(path)
+    if os.path.lexists(target):
+        raise OutputError(f"output must be a new folder; {str(target)!r} exists. Choose another name.")
+    beside = target.with_name(f".reweight-{secrets.token_hex(6)}")
+    try:
+        with _writing(target):
+            beside.mkdir(parents=True)
+        yield beside
+        with _writing(target):
+            os.rename(beside, target)
+    except BaseException as error:
+        shutil.rmtree(beside, ignore_errors=True)
+        if _lacks_room(error):
+            raise OutputError(_not_writable(target, error)) from error
+        raise
 
 
 def write_text(
@@ -130,6 +167,28 @@ def refuse_target(target: Path, *, force: bool, inputs: Iterable[str | os.PathLi
         )
 
 
+def refuse_contents(target: Path, contents: Collection[tuple[int, str]]) -> None:
+    """Refuse to replace a file that holds the same bytes as one of those an answer rests on, wherever it lies.
+
+    Parameters
+    ----------
+    target : pathlib.Path
+    contents : collection of (int, str)
+        Size in bytes and SHA-256 of each of them.
+
+    Raises
+    ------
+    OutputError
+        As said.
+    """
+    if not target.is_file() or target.stat().st_size not in {size for size, _ in contents}:
+        return
+    if (target.stat().st_size, hash_file(target)) in contents:
+        raise OutputError(
+            f"output {str(target)!r} must not replace an input; it holds the bytes of one. Choose another name."
+        )
+
+
 def _kind(mode: int) -> str:
     kinds = (
         (stat.S_ISDIR, "a folder"),
@@ -140,14 +199,30 @@ def _kind(mode: int) -> str:
     return next((name for matches, name in kinds if matches(mode)), "a device")
 
 
-def _not_writable(target: Path, error: OSError) -> str:
-    if error.errno in _NO_ROOM:
+@contextmanager
+def _writing(target: Path) -> Iterator[None]:
+    try:
+        yield
+    except OSError as error:
+        raise OutputError(_not_writable(target, error)) from error
+
+
+def _lacks_room(error: BaseException) -> bool:
+    """Whether it says that the disk is full; NetCDF-C says no more than that writing failed."""
+    if isinstance(error, OSError):
+        return error.errno in _NO_ROOM
+    return isinstance(error, RuntimeError) and str(error).startswith("NetCDF: ")
+
+
+def _not_writable(target: Path, error: BaseException) -> str:
+    said = (isinstance(error, OSError) and error.strerror) or error
+    if _lacks_room(error):
         return (
-            f"output {str(target)!r} needs more room than is left ({error.strerror}); nothing was written. "
+            f"output {str(target)!r} needs more room than is left ({said}); nothing was written. "
             "Free some space, or write to another disk."
         )
     return (
-        f"output {str(target)!r} must be writable; the system says: {error.strerror or error}. "
+        f"output {str(target)!r} must be writable; the system says: {said}. "
         "Choose another name or folder, or change the permissions."
     )
 

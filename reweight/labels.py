@@ -42,7 +42,7 @@ def product_unit(first: str, second: str) -> str:
 
 
 def value_attributes(
-    label: str, long_name: str, unit: str, *, per: str | None, per_kelvin_unit: bool
+    label: str, long_name: str, unit: str, *, per: str | None, per_kelvin_unit: bool, comment: str = ""
 ) -> Attributes:
     """Attributes of an answer."""
     attributes = {
@@ -52,6 +52,8 @@ def value_attributes(
     }
     if per_kelvin_unit and "K-1" in unit:
         attributes["units_metadata"] = "temperature: difference"
+    if comment:
+        attributes["comment"] = comment
     return attributes
 
 

@@ -113,7 +113,8 @@ def pairwise_start(weights: Array, counts: Array, beta: Array, energies: Array) 
             return free
         longest *= 2
     raise ConvergenceError(
-        "two neighbouring runs could not be joined: their energies exceed double precision"
+        "energies of neighbouring runs must differ by less than double precision holds; these could not be joined. "
+        "Look for fill values and check the unit."
     )
 
 

@@ -8,7 +8,20 @@ from __future__ import annotations
 import math
 from collections.abc import Callable
 
-__all__ = ["bracket", "quantity_text", "rounded", "significant", "within"]
+__all__ = ["bracket", "printable", "quantity_text", "rounded", "significant", "within"]
+
+
+def printable(text: str) -> str:
+    r"""Write what a terminal would not show as itself as an escape: names of files are data, and may hold anything.
+
+    Examples
+    --------
+    >>> printable("run 7"), printable("a\nb \u202efdp.exe")
+    ('run 7', 'a\\nb \\u202efdp.exe')
+    """
+    if text.isprintable():
+        return text
+    return "".join(each if each.isprintable() else each.encode("unicode_escape").decode() for each in text)
 
 
 def bracket(value: float, standard_error: float, digits: int = 2) -> str:

@@ -7,8 +7,8 @@ variables ``energy`` and the observables, and a scalar coordinate ``temperature`
 from __future__ import annotations
 
 import dataclasses
-from collections.abc import Callable, Iterator, Mapping
-from dataclasses import dataclass, field
+from collections.abc import Callable, Iterator, Mapping, Sequence
+from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -17,14 +17,23 @@ from numpy.typing import ArrayLike, NDArray
 from reweight.clock import Clock
 from reweight.errors import InputError
 from reweight.labels import energy_unit_label, temperature_attributes
-from reweight.reading import FileLedger, Timekeeper, run_chunks
+from reweight.reading import (
+    FileLedger,
+    KnownPart,
+    ReplicaRecord,
+    SortedRows,
+    Timekeeper,
+    regrouped,
+    run_chunks,
+    sorted_by_temperature,
+)
 from reweight.study import Run, Study
 from reweight.units import REDUCED, canonical_unit
 
 if TYPE_CHECKING:
     import xarray as xr
 
-__all__ = ["Source", "as_tree", "file_sources", "read_runs", "tree_sources"]
+__all__ = ["Source", "as_tree", "file_source", "file_sources", "read_runs", "tree_sources"]
 
 Array = NDArray[np.float64]
 
@@ -43,41 +52,101 @@ class Source:
     discard : int or str
         ``"auto"``, rows, a percentage such as ``"10 %"``, or a time such as ``"20 ns"``.
     files : callable
-        Returns the ledger entries, complete once the chunks are exhausted.
+        Returns the ledger entries, given how many of the first rows are not used; complete once the chunks are exhausted.
     clock : callable
         Returns the time between rows, known once the chunks are exhausted; None if there is no clock.
+    temperature : float or None
+        In the study's unit, if the study or a file says it.
+    replicas : ReplicaRecord or None
+        Of the exchange this run is a temperature of, if its files follow replicas.
     """
 
     name: str
     beta: float
     chunks: Callable[[], Iterator[Array]]
     discard: int | str = "auto"
-    files: Callable[[], tuple[dict[str, Any], ...]] = field(default=tuple)
+    files: Callable[[int], tuple[dict[str, Any], ...]] = lambda _: ()
     clock: Callable[[], Clock | None] = lambda: None
+    temperature: float | None = None
+    replicas: ReplicaRecord | None = None
 
 
 def file_sources(study: Study) -> list[Source]:
-    """One source a run in use; files are opened when their chunks are asked for."""
-    return [_file_source(study, run) for run in study.used_runs]
+    """One source a run in use; files are opened when their chunks are asked for.
+
+    Files whose rows are sorted by temperature are read at once: only they tell how many runs there are.
+
+    Raises
+    ------
+    DataFileError, StudyError
+        Such a file cannot be read without changing a number, or holds no ladder of temperatures.
+    """
+    if study.replicas:
+        found, record = regrouped(study)
+        return [_sorted_source(study, rows, study.replicas[0].discard, "", record) for rows in found]
+    if study.columns.temperature is not None:
+        prefixes = {run.name: f"{run.name}, " if len(study.runs) > 1 else "" for run in study.used_runs}
+        return [
+            _sorted_source(study, rows, run.discard, prefixes[run.name], None)
+            for run in study.used_runs
+            for rows in sorted_by_temperature(study, run)
+        ]
+    return [file_source(study, run) for run in study.used_runs]
 
 
-def _file_source(study: Study, run: Run) -> Source:
+def _sorted_source(
+    study: Study, rows: SortedRows, discard: int | str, prefix: str, record: ReplicaRecord | None
+) -> Source:
+    unit = "" if study.temperature_unit == REDUCED else f" {study.temperature_unit}"
+    return Source(
+        name=f"{prefix}{np.format_float_positional(rows.temperature, trim='-')}{unit}",
+        beta=study.beta(rows.temperature),
+        chunks=rows.spool.chunks,
+        discard=discard,
+        files=rows.files,
+        clock=lambda: rows.clock(study.columns.time_unit),
+        temperature=rows.temperature,
+        replicas=record,
+    )
+
+
+def file_source(study: Study, run: Run, known: Sequence[KnownPart] = ()) -> Source:
+    """Source of a run, or of the rows after those in the known parts of its first files."""
     ledgers: list[FileLedger] = []
     timekeepers: list[Timekeeper] = []
 
     def chunks() -> Iterator[Array]:
         ledgers.clear()
-        timekeepers[:] = [Timekeeper()]
-        return run_chunks(study, run, ledgers, timekeepers[0])
+        timekeepers[:] = [_timekeeper(known)]
+        return run_chunks(study, run, ledgers, timekeepers[0], known)
 
     return Source(
         name=run.name,
         beta=run.beta(study),
         chunks=chunks,
         discard=run.discard,
-        files=lambda: tuple(dataclasses.asdict(ledger) for ledger in ledgers),
+        files=lambda transient: _accounted(ledgers, transient),
         clock=lambda: timekeepers[0].clock(study.columns.time_unit),
+        temperature=run.temperature,
     )
+
+
+def _accounted(ledgers: Sequence[FileLedger], transient: int) -> tuple[dict[str, Any], ...]:
+    """Ledger entries with the transient taken from the first rows kept."""
+    entries = []
+    for ledger in ledgers:
+        here = min(transient, ledger.kept)
+        transient -= here
+        entries.append({**dataclasses.asdict(ledger), "kept": ledger.kept - here, "transient": here})
+    return tuple(entries)
+
+
+def _timekeeper(known: Sequence[KnownPart]) -> Timekeeper:
+    """One that has seen the times of the rows known."""
+    if not known or known[0].ledger.first_time is None or known[-1].ledger.last_time is None:
+        return Timekeeper()
+    rows = sum(part.ledger.kept for part in known)
+    return Timekeeper.resumed(known[0].ledger.first_time, known[-1].ledger.last_time, rows)
 
 
 def read_runs(study: Study) -> xr.DataTree:
@@ -101,34 +170,41 @@ def read_runs(study: Study) -> xr.DataTree:
     import xarray as xr
 
     children = {}
-    for run in study.used_runs:
-        ledgers: list[FileLedger] = []
-        timekeeper = Timekeeper()
-        rows = np.concatenate(list(run_chunks(study, run, ledgers, timekeeper)))
+    for source in file_sources(study):
+        rows = np.concatenate(list(source.chunks()))
         columns = {"energy": rows[:, 0]}
         columns |= {name: rows[:, 1 + place] for place, name in enumerate(study.observables)}
+        inverse_temperature = source.beta if source.temperature is None else None
         child = _child(
-            columns, run.temperature, run.inverse_temperature, study.energy_unit, study.temperature_unit
+            columns, source.temperature, inverse_temperature, study.energy_unit, study.temperature_unit
         )
+        if study.conditions.pressure is not None:
+            child["energy"].attrs["long_name"] = "enthalpy"
         for name, observable in study.observables.items():
             child[name].attrs = {
                 "units": canonical_unit(observable.unit),
                 "long_name": name,
                 "normalisation": observable.normalisation,
             }
+        files = source.files(0)
         child.attrs = {
-            "source": ", ".join(run.files),
-            "sha256": ", ".join(ledger.sha256 for ledger in ledgers),
+            "source": ", ".join(entry["path"] for entry in files),
+            "sha256": ", ".join(entry["sha256"] for entry in files),
         }
-        if (clock := timekeeper.clock(study.columns.time_unit)) is not None:
+        if (clock := source.clock()) is not None:
             child.attrs |= {"time_step": clock.step, "time_unit": clock.unit}
-        children[run.name] = child
+        children[source.name] = child
     tree = xr.DataTree(children={name: xr.DataTree(child) for name, child in children.items()})
     tree.attrs = {
         "title": study.title,
         "energy_unit": study.energy_unit,
         "temperature_unit": study.temperature_unit,
+        "energy_kind": study.energy_kind,
     }
+    if study.conditions.pressure is not None:
+        tree.attrs["pressure"] = study.conditions.pressure
+    if study.conditions.degrees_of_freedom:
+        tree.attrs["degrees_of_freedom"] = study.conditions.degrees_of_freedom
     if study.system.count is not None:
         tree.attrs |= {"count": study.system.count, "per": study.system.per}
     return tree

@@ -1,7 +1,8 @@
 """The combined file: NetCDF with one group a run, opened again bit for bit.
 
-Layout (``schema_version`` 1): attributes ``description``, ``study``, ``left_out`` and ``provenance`` at the root, the free
-energies on ``run``; a group a run with its tally (kept rows, leaves, thinned series) and what was decided about it.
+Layout (``schema_version`` 1): attributes ``description``, ``study``, ``left_out``, ``replicas`` and ``provenance`` at
+the root, the free energies on ``run``; a group a run with its tally (kept rows, leaves, thinned series) and what was
+decided about it.
 Structured attributes are JSON.  No dates, so equal inputs give equal files.
 
 All netCDF calls of a process are made under one lock: netCDF-C is not thread safe.
@@ -27,12 +28,13 @@ from reweight.estimate import Estimate
 from reweight.files import replacing
 from reweight.memory import keep_freed_memory
 from reweight.multistate import solution_at
+from reweight.reading import ReplicaRecord
 from reweight.reading.netcdf import NETCDF_LOCK
 from reweight.series.correlation import Inefficiency
 from reweight.tally.assemble import assemble
 from reweight.tally.leaves import LeafSums
 from reweight.tally.levels import Spacing
-from reweight.tally.nodes import Nodes
+from reweight.tally.nodes import FIRST_ROWS, Nodes
 from reweight.tally.run_tally import RunTally
 from reweight.tally.thinned import Thinned
 
@@ -87,6 +89,7 @@ def _write(file: Any, combined: DensityOfStates) -> None:
             "study": combined.study_text,
             "left_out": _json([dataclasses.asdict(each) for each in combined.left_out]),
             "provenance": _json(combined.provenance),
+            "replicas": _json(None if combined.replicas is None else dataclasses.asdict(combined.replicas)),
             "solver": _json(
                 {
                     "iterations": combined.estimate.solution.iterations,
@@ -111,6 +114,8 @@ def _write(file: Any, combined: DensityOfStates) -> None:
         if run.clock is not None:
             group.setncatts({"time_step": run.clock.step, "time_unit": run.clock.unit})
         _variable(group, "kept_rows", ("row", "column"), tally.tail)
+        if not _are_first_rows(tally):
+            _variable(group, "first_energies", ("first_row",), run.first_energies)
         if tally.leaves is not None and tally.thinned is not None:
             _variable(group, "keys", ("key",), tally.leaves.keys)
             # Counts of levels shrink tenfold; other sums hardly, and would take longer to pack than to compute.
@@ -126,6 +131,11 @@ def _write(file: Any, combined: DensityOfStates) -> None:
             _variable(group, "thinned_origin", ("column",), tally.thinned.origin)
             _variable(group, "thinned_sums", ("group", "column"), tally.thinned.sums)
             _variable(group, "thinned_squares", ("group", "column"), tally.thinned.squares)
+
+
+def _are_first_rows(tally: RunTally) -> bool:
+    """Whether the rows kept are the run's first, as they were read."""
+    return tally.leaves is None and tally.nodes.spacing is None
 
 
 def _json(data: object) -> str:
@@ -228,6 +238,7 @@ def _read(file: Any, most_bytes: int) -> DensityOfStates:
             thinned=thinned,
             files=tuple(json.loads(group.files)),
             clock=_clock(group),
+            first_energies=_first_energies(group, tally, most_bytes),
         )
         for group, tally, leaves, thinned in loaded
     ]
@@ -242,13 +253,26 @@ def _read(file: Any, most_bytes: int) -> DensityOfStates:
         runs=tuple(records),
         estimate=estimate,
         left_out=tuple(LeftOut(**each) for each in json.loads(file.left_out)),
+        replicas=_replicas(json.loads(getattr(file, "replicas", "null"))),
         study_text=file.study,
         provenance=json.loads(file.provenance),
     )
 
 
+def _first_energies(group: Any, tally: RunTally, most_bytes: int) -> NDArray[np.float64]:
+    if _are_first_rows(tally):
+        return tally.tail[:FIRST_ROWS, 0]
+    if "first_energies" not in group.variables:  # the first files did not keep them
+        return np.empty(0)
+    return _values(group, "first_energies", most_bytes)
+
+
 def _decision(data: dict[str, Any]) -> Decision:
     return Decision(**{**data, "inefficiency": Inefficiency(**data["inefficiency"])})
+
+
+def _replicas(data: dict[str, Any] | None) -> ReplicaRecord | None:
+    return None if data is None else ReplicaRecord.from_dict(data)
 
 
 def _clock(group: Any) -> Clock | None:

@@ -5,16 +5,18 @@ from __future__ import annotations
 import math
 import numbers
 import os
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from typing import TYPE_CHECKING, Any
 
 from numpy.typing import ArrayLike
 
 from reweight.clock import Clock
 from reweight.combining import WORKERS, Progress, combine_sources
+from reweight.continuing import known_runs
 from reweight.density_of_states import DensityOfStates, Description, LeftOut, ObservableDescription
 from reweight.errors import InputError
 from reweight.runs import as_tree, file_sources, tree_sources
+from reweight.saving import open_combined
 from reweight.study import Study, load_study
 from reweight.study.values import discarded_start, number_of_states
 from reweight.units import REDUCED, time_factor
@@ -45,6 +47,8 @@ def combine(
     observables: Mapping[str, Mapping[str, Any]] | None = None,
     workers: int | None = None,
     progress: Progress | None = None,
+    continued: str | os.PathLike[str] | DensityOfStates | None = None,
+    tell: Callable[[str], None] | None = None,
 ) -> DensityOfStates:
     """Combine canonical runs into one estimate of the density of states.
 
@@ -83,6 +87,11 @@ def combine(
         on it.
     progress : callable, optional
         Called with a run's name and the number of rows just tallied.
+    continued : path or DensityOfStates, optional
+        An earlier combined file of the study: of files that have only grown, only what is new is read.  The result has
+        the same bits as without it.
+    tell : callable, optional
+        Called with a sentence for everything that is read again although it was known.
 
     Returns
     -------
@@ -108,11 +117,22 @@ def combine(
     if isinstance(runs, (str, os.PathLike, Study)):
         if changed or any(each is not None for each in (*given, *clock)):
             raise InputError(
-                "a study file says temperatures, units, weighting and all the rest itself; nothing but workers and "
-                "progress may be given beside it. Change the study."
+                "a study file says temperatures, units, weighting and all the rest itself; nothing but workers, "
+                "progress, continued and tell may be given beside it. Change the study."
             )
         study = runs if isinstance(runs, Study) else load_study(runs)
-        return combine_study(study, workers=workers or WORKERS, progress=progress)
+        return combine_study(
+            study,
+            workers=workers or WORKERS,
+            progress=progress,
+            continued=continued,
+            tell=tell or (lambda _: None),
+        )
+    if continued is not None:
+        raise InputError(
+            "continued must go with a study file, whose files can be compared with those read before; got runs in "
+            "memory. Combine them all without it."
+        )
     tree = as_tree(
         runs,
         temperatures=temperatures,
@@ -122,6 +142,7 @@ def combine(
     description = Description(
         title=title or tree.attrs.get("title", ""),
         energy_unit=energy_unit or tree.attrs.get("energy_unit", REDUCED),
+        energy_kind=tree.attrs.get("energy_kind", "potential"),
         temperature_unit=temperature_unit
         or tree.attrs.get("temperature_unit", REDUCED if energy_unit in (None, REDUCED) else "K"),
         count=count if count is not None else tree.attrs.get("count"),
@@ -130,6 +151,8 @@ def combine(
         ground_degeneracy=ground_degeneracy,
         weighting=_one_of("weighting", weighting, ("independent", "samples")),
         exchange=exchange,
+        pressure=tree.attrs.get("pressure"),
+        degrees_of_freedom=tree.attrs.get("degrees_of_freedom", 0),
         observables=_described(tree, observables),
     )
     beta = {name: _beta(description, child) for name, child in tree.children.items()}
@@ -144,9 +167,17 @@ def combine(
 
 
 def combine_study(
-    study: Study, *, connected: bool = True, workers: int = WORKERS, progress: Progress | None = None
+    study: Study,
+    *,
+    connected: bool = True,
+    workers: int = WORKERS,
+    progress: Progress | None = None,
+    continued: str | os.PathLike[str] | DensityOfStates | None = None,
+    tell: Callable[[str], None] = lambda _: None,
 ) -> DensityOfStates:
     """Combine the runs of a study; `connected` as in :func:`reweight.combining.combine_sources`."""
+    if isinstance(continued, (str, os.PathLike)):
+        continued = open_combined(continued)
     system = study.system
     description = Description(
         title=study.title,
@@ -161,7 +192,9 @@ def combine_study(
         ground_degeneracy=system.ground_degeneracy,
         weighting=study.weighting,
         resolution=study.resolution,
-        exchange=study.conditions.exchange,
+        exchange=study.exchange,
+        pressure=study.conditions.pressure,
+        degrees_of_freedom=study.conditions.degrees_of_freedom,
         observables=tuple(
             ObservableDescription(
                 name=name,
@@ -178,7 +211,11 @@ def combine_study(
         file_sources(study),
         description,
         left_out=[
-            LeftOut(name=run.name, beta=run.beta(study), reason=run.reason)
+            LeftOut(
+                name=run.name,
+                beta=run.beta(study) if study.columns.temperature is None else None,
+                reason=run.reason,
+            )
             for run in study.runs
             if not run.use
         ],
@@ -187,6 +224,8 @@ def combine_study(
         connected=connected,
         workers=workers,
         progress=progress,
+        known={} if continued is None else known_runs(study, continued, tell),
+        tell=tell,
     )
 
 

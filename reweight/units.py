@@ -29,6 +29,7 @@ __all__ = [
     "canonical_unit",
     "energy_factor",
     "per_kelvin",
+    "pressure_volume_factor",
     "time_factor",
     "to_kelvin",
 ]
@@ -39,6 +40,8 @@ TEMPERATURE_UNITS = ("K", "degC", REDUCED)
 COUNTED_TIMES = ("step", "sweep", REDUCED)  # clocks of simulations that know no seconds
 
 _EXAMPLES = ("kJ/mol", "kcal/mol", "eV", "meV", "hartree", "J", "cm^-1", "K", REDUCED)
+_PRESSURES = ("bar", "MPa", "atm", REDUCED)
+_VOLUMES = ("nm^3", "angstrom^3", "cm^3/mol", REDUCED)
 _FACTOR = re.compile(r"([A-Za-zµμ_Å°%]+)(?:\^?([+-]?[0-9]{1,2}))?")
 _SEPARATOR = re.compile(r"\s*([*/·])\s*|\s+")
 
@@ -90,6 +93,17 @@ def _boltzmann_constant(energy_unit: str) -> float:
     if energy_unit == REDUCED:
         return 1.0
     quantity = _quantity(energy_unit)
+    constant = _constant_in(quantity)
+    if constant is None:
+        raise InputError(
+            f"energy unit must be an energy; got {energy_unit!r}, which has the dimension "
+            f"{quantity.dimensionality}. Use a unit like {', '.join(_EXAMPLES)}."
+        )
+    return constant
+
+
+def _constant_in(quantity: pint.Quantity[float]) -> float | None:
+    """k_B in a unit of energy per kelvin; None if it is no energy in any sense."""
     meanings = {  # what k_B becomes for each kind of unit in which people write energies
         "[energy]": (scipy.constants.k, "J/K"),
         "[energy] / [substance]": (scipy.constants.k * scipy.constants.N_A, "J/mol/K"),
@@ -99,10 +113,7 @@ def _boltzmann_constant(energy_unit: str) -> float:
     for dimension, (constant, unit) in meanings.items():
         if quantity.check(dimension):
             return float(constant / (1.0 * quantity / _registry().kelvin).to(unit).magnitude)
-    raise InputError(
-        f"energy unit must be an energy; got {energy_unit!r}, which has the dimension "
-        f"{quantity.dimensionality}. Use a unit like {', '.join(_EXAMPLES)}."
-    )
+    return None
 
 
 def energy_factor(from_unit: str, to_unit: str) -> float:
@@ -129,6 +140,59 @@ def energy_factor(from_unit: str, to_unit: str) -> float:
             f"got {from_unit!r} to {to_unit!r}."
         )
     return _boltzmann_constant(to_unit) / _boltzmann_constant(from_unit)
+
+
+def pressure_volume_factor(pressure_unit: str, volume_unit: str, energy_unit: str) -> float:
+    """Energy that is one unit of pressure times one unit of volume.
+
+    Parameters
+    ----------
+    pressure_unit : str
+        Such as ``"bar"``; ``"reduced"`` if and only if the other two are.
+    volume_unit : str
+        Such as ``"nm^3"``, or a molar one such as ``"cm^3/mol"``.
+    energy_unit : str
+        As in :func:`boltzmann_constant`.
+
+    Returns
+    -------
+    float
+        In `energy_unit`.
+
+    Raises
+    ------
+    InputError
+        A unit is unknown or is no pressure or volume, or only some of them are ``"reduced"``.
+
+    Examples
+    --------
+    >>> round(pressure_volume_factor("bar", "nm^3", "kJ/mol"), 9)
+    0.060221408
+    """
+    _refuse_mixed({"pressure": pressure_unit, "volume": volume_unit, "energy": energy_unit})
+    if energy_unit == REDUCED:
+        return 1.0
+    pressure = _quantity(pressure_unit, "unit of pressure", _PRESSURES)
+    volume = _quantity(volume_unit, "unit of volume", _VOLUMES)
+    for what, unit, quantity, dimensions, examples in (
+        ("pressure", pressure_unit, pressure, ("[pressure]",), _PRESSURES),
+        ("volume", volume_unit, volume, ("[volume]", "[volume] / [substance]"), _VOLUMES),
+    ):
+        if not any(quantity.check(dimension) for dimension in dimensions):
+            raise InputError(
+                f"unit of {what} must be a {what}; got {unit!r}, which has the dimension {quantity.dimensionality}. "
+                f"Use a unit like {', '.join(examples)}."
+            )
+    constant = _constant_in(pressure * volume)
+    assert constant is not None  # a pressure times a volume is an energy
+    return _boltzmann_constant(energy_unit) / constant
+
+
+def _refuse_mixed(given: dict[str, str]) -> None:
+    reduced = [unit == REDUCED for unit in given.values()]
+    if any(reduced) and not all(reduced):
+        found = ", ".join(f"{what} in {unit!r}" for what, unit in given.items())
+        raise InputError(f"units of {', '.join(given)} must be {REDUCED!r} all or none; got {found}.")
 
 
 def time_factor(from_unit: str, to_unit: str) -> float:

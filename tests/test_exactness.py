@@ -19,13 +19,13 @@ import pytest
 from naive import sample_by_sample
 
 import reweight as rw
-from reweight import combining
 from reweight.answers.evaluate import evaluate
 from reweight.combining import combine_sources
 from reweight.quantities.energy import MeanEnergy
 from reweight.quantities.heat_capacity import HeatCapacity
 from reweight.quantities.moments import Moments
 from reweight.runs import Source
+from reweight.tally import nodes
 
 TOLERANCE = 1e-10
 PYMBAR_TOLERANCE = 1e-9
@@ -203,8 +203,8 @@ def test_narrower_panels_change_nothing() -> None:
 
 def test_panels_too_wide_are_noticed_by_these_very_comparisons(monkeypatch: pytest.MonkeyPatch) -> None:
     """Negative control: with panels 32 times as wide the comparison with the naive sum must fail."""
-    original = combining.panel_width
-    monkeypatch.setattr(combining, "panel_width", lambda *arguments: 32 * original(*arguments))
+    original = nodes.panel_width
+    monkeypatch.setattr(nodes, "panel_width", lambda *arguments: 32 * original(*arguments))
     runs, temperatures = CASES["six runs, thin overlap"].draw(seed=20240501)
     combined = rw.combine(runs, temperatures=temperatures, weighting="samples", discard=0)
 

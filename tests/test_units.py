@@ -4,7 +4,14 @@ import pytest
 import scipy.constants
 
 from reweight.errors import InputError
-from reweight.units import boltzmann_constant, canonical_unit, energy_factor, per_kelvin, to_kelvin
+from reweight.units import (
+    boltzmann_constant,
+    canonical_unit,
+    energy_factor,
+    per_kelvin,
+    pressure_volume_factor,
+    to_kelvin,
+)
 
 # SI Brochure, 9th edition (2019): k, N_A, e, h and c are exact, so the first six are; the calorie is the
 # thermochemical one of 4.184 J.
@@ -81,6 +88,55 @@ def test_energies_convert_between_particles_and_amounts_of_substance():
     assert energy_factor("eV", "kJ/mol") == pytest.approx(96.48533212331001, rel=1e-14)
     assert energy_factor("kcal/mol", "kJ/mol") == pytest.approx(4.184, rel=1e-14)
     assert energy_factor("reduced", "reduced") == 1.0
+
+
+# One bar is 1e5 Pa and one standard atmosphere 101325 Pa, both exact; with the exact N_A = 6.02214076e23 /mol and
+# e = 1.602176634e-19 C (SI Brochure, 9th edition, 2019) and the calorie of 4.184 J, the products below are exact ratios,
+# computed with 30 digits.  The hartree is that of CODATA 2022, 4.3597447222060e-18 J.
+@pytest.mark.parametrize(
+    ("pressure_unit", "volume_unit", "energy_unit", "expected"),
+    [
+        ("bar", "nm^3", "kJ/mol", 0.0602214076),
+        ("atm", "angstrom^3", "kcal/mol", 101325e-30 * 6.02214076e23 / 4184),
+        ("bar", "Å^3", "eV", 1e-25 / 1.602176634e-19),
+        ("MPa", "nm^3", "J", 1e-21),
+        ("GPa", "angstrom^3", "eV", 1e-21 / 1.602176634e-19),
+        ("bar", "cm^3/mol", "J/mol", 0.1),
+        ("bar", "L/mol", "kJ/mol", 0.1),
+        ("Pa", "m^3", "hartree", 1 / 4.359744722206e-18),
+        ("bar", "nm^3", "K", 1e-22 / 1.380649e-23),
+        ("reduced", "reduced", "reduced", 1.0),
+    ],
+)
+def test_pressure_times_volume_is_an_energy(pressure_unit, volume_unit, energy_unit, expected):
+    # 1e-13: the hartree is printed with 13 digits; everything else is exact
+    assert pressure_volume_factor(pressure_unit, volume_unit, energy_unit) == pytest.approx(
+        expected, rel=1e-13
+    )
+
+
+@pytest.mark.parametrize(
+    ("pressure_unit", "volume_unit", "energy_unit", "message"),
+    [
+        ("K", "nm^3", "eV", "unit of pressure must be a pressure; got 'K'.*Use a unit like bar"),
+        ("bar", "nm", "eV", r"unit of volume must be a volume; got 'nm'.*Use a unit like nm\^3"),
+        ("bar", "nm^3", "nm", "energy unit must be an energy"),
+        ("bar", "reduced", "eV", "must be 'reduced' all or none; got pressure in 'bar', volume in 'reduced'"),
+        ("baar", "nm^3", "eV", "'baar' is not one"),
+    ],
+)
+def test_what_makes_no_energy_is_refused(pressure_unit, volume_unit, energy_unit, message):
+    with pytest.raises(InputError, match=message):
+        pressure_volume_factor(pressure_unit, volume_unit, energy_unit)
+
+
+# Derived in the SI of 2019 from k_B and N_A, 12 digits
+@pytest.mark.parametrize(
+    ("unit", "kelvin", "thermal_energy"),
+    [("kJ/mol", 300.0, 2.49433878545), ("kcal/mol", 298.15, 0.592484949714)],
+)
+def test_thermal_energies_agree_with_tabulated_ones(unit, kelvin, thermal_energy):
+    assert boltzmann_constant(unit, "K") * kelvin == pytest.approx(thermal_energy, rel=2e-12)
 
 
 def test_reduced_energies_do_not_convert():

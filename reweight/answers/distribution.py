@@ -88,7 +88,10 @@ def distribution(
     unit = energy_unit_label(combined.description.energy_unit)
     value_unit = "1" if bins.width is None or unit == "1" else _inverse(unit)
     name = "probability" if bins.width is None else "probability density"
-    attributes = value_attributes(LABEL, f"{name} of the energy", value_unit, per=None, per_kelvin_unit=False)
+    energy_name = combined.description.ensemble.energy_name
+    attributes = value_attributes(
+        LABEL, f"{name} of the {energy_name}", value_unit, per=None, per_kelvin_unit=False
+    )
     attributes["ancillary_variables"] = f"{LABEL}_standard_error {LABEL}_interval"
     lower, upper = bins.edges()
     return xr.Dataset(
@@ -108,7 +111,7 @@ def distribution(
             "run_histogram": (
                 ("run", "energy"),
                 histogram,
-                {"units": value_unit, "long_name": f"{name} of the energy in the run's own samples"},
+                {"units": value_unit, "long_name": f"{name} of the {energy_name} in the run's own samples"},
             ),
         },
         coords={
@@ -117,7 +120,7 @@ def distribution(
                 given,
                 temperature_attributes(combined.description.temperature_unit),
             ),
-            "energy": ("energy", bins.energy, {"units": unit, "long_name": "energy"}),
+            "energy": ("energy", bins.energy, {"units": unit, "long_name": energy_name}),
             "energy_lower": ("energy", lower, {"units": unit, "long_name": "lower end of the bin"}),
             "energy_upper": ("energy", upper, {"units": unit, "long_name": "upper end of the bin"}),
             "run": ("run", np.array([combined.runs[place].name for place in combined.cold_to_hot])),

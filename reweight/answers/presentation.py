@@ -42,6 +42,7 @@ class Presentation:
             self.unit,
             per=self.per,
             per_kelvin_unit=self.per_kelvin,
+            comment=quantity.comment,
         )
         if not linked:
             del attributes["ancillary_variables"]

@@ -34,7 +34,9 @@ FEWEST_CARRIERS = {False: 20.0, True: 30.0}
 
 SEARCH_STEPS = 240
 BISECTIONS = 40
-OUTWARD = 10.0  # how far beyond the simulated temperatures to look, in inverse standard deviations of the energy
+OUTWARD = (
+    10.0  # how far beyond the simulated temperatures to look, in inverse standard deviations of the energy
+)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

@@ -208,7 +208,11 @@ def _labelled(
             ),
         },
         coords={
-            "energy": ("energy", bins.energy, {"units": unit, "long_name": "energy"}),
+            "energy": (
+                "energy",
+                bins.energy,
+                {"units": unit, "long_name": combined.description.ensemble.energy_name},
+            ),
             "energy_lower": ("energy", lower, {"units": unit, "long_name": "lower end of the bin"}),
             "energy_upper": ("energy", upper, {"units": unit, "long_name": "upper end of the bin"}),
             "bound": ("bound", np.array(["lower", "upper"])),

@@ -6,6 +6,7 @@ from collections.abc import Callable
 from weakref import WeakKeyDictionary
 
 from reweight.checks.doubled_start import doubled_start
+from reweight.checks.far_samples import far_samples
 from reweight.checks.finding import Finding
 from reweight.checks.length import length
 from reweight.checks.links import links
@@ -16,6 +17,7 @@ from reweight.density_of_states import DensityOfStates
 __all__ = ["CHECKS", "findings"]
 
 CHECKS: tuple[Callable[[DensityOfStates], list[Finding]], ...] = (
+    far_samples,
     links,
     length,
     slowest_times,

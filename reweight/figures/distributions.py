@@ -48,7 +48,7 @@ def draw_distribution(axes: Axes, dataset: xr.Dataset) -> Axes:
             energy, value, color=colour, linestyle=DASHES[place % len(DASHES)], label=f"T = {temperature:g}"
         )
     axes.set_ylim(bottom=0)
-    axes.set_xlabel(axis_text("energy", dataset["energy"].attrs["units"]))
+    axes.set_xlabel(axis_text(dataset["energy"].attrs["long_name"], dataset["energy"].attrs["units"]))
     axes.set_ylabel(
         axis_text(dataset["probability"].attrs["long_name"], dataset["probability"].attrs["units"])
     )
@@ -65,7 +65,7 @@ def draw_states(axes: Axes, dataset: xr.Dataset) -> Axes:
     marker = "." if dataset.attrs["bins"] == "levels" and energy.size < 200 else ""
     value = dataset["log_density_of_states"].to_numpy()[seen]
     axes.plot(energy, value, color=LINE, marker=marker, markersize=2, linewidth=0.8)
-    axes.set_xlabel(axis_text("energy", dataset["energy"].attrs["units"]))
+    axes.set_xlabel(axis_text(dataset["energy"].attrs["long_name"], dataset["energy"].attrs["units"]))
     levels = dataset.attrs["bins"] == "levels"
     axes.set_ylabel("ln g(E)" if levels else "ln density of states")
     text = "absolute" if dataset.attrs["absolute"] else f"zero at {dataset.attrs['reference_energy']:.6g}"

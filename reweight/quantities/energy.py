@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 
+from reweight.quantities.ensemble import CONSTANT_VOLUME, Ensemble
 from reweight.quantities.moments import Moment, Moments
 from reweight.quantities.quantity import Array, Measure, Quantity, Scaling
 
@@ -17,9 +18,11 @@ class MeanEnergy(Quantity):
 
     name = "energy"
     label = "mean_energy"
-    long_name = "mean energy"
     measure = Measure.ENERGY
     scaling = Scaling.EXTENSIVE
+
+    def __init__(self, ensemble: Ensemble = CONSTANT_VOLUME) -> None:
+        self.long_name = f"mean {ensemble.energy_name}"
 
     def value(self, moments: Moments) -> Array:
         """Return the mean energy."""

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 
+from reweight.quantities.ensemble import CONSTANT_VOLUME, Ensemble
 from reweight.quantities.moments import LOG_PARTITION, Moment, Moments
 from reweight.quantities.quantity import Array, Measure, Quantity, Scaling
 
@@ -18,10 +19,13 @@ class FreeEnergy(Quantity):
 
     name = "free_energy"
     label = "free_energy"
-    long_name = "free energy over k_B T"
     measure = Measure.NUMBER
     scaling = Scaling.EXTENSIVE
     from_reference = True
+
+    def __init__(self, ensemble: Ensemble = CONSTANT_VOLUME) -> None:
+        kind = "Gibbs energy" if ensemble.constant_pressure else "free energy"
+        self.long_name = f"{kind} over k_B T"
 
     def value(self, moments: Moments) -> Array:
         """Return ``-ln Z`` up to a constant."""

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 
+from reweight.quantities.ensemble import Ensemble
 from reweight.quantities.moments import Moment, Moments
 from reweight.quantities.quantity import Array, Measure, Quantity, Scaling
 from reweight.tally.nodes import Column
@@ -19,12 +20,12 @@ class ObservableCovariance(Quantity):
     measure = Measure.OBSERVABLE_ENERGY
     fluctuation = True
 
-    def __init__(self, observable: str, scaling: Scaling) -> None:
+    def __init__(self, observable: str, scaling: Scaling, ensemble: Ensemble) -> None:
         self.observable = observable
         self.scaling = scaling
         self.name = f"{observable}.covariance"
         self.label = f"{observable}_covariance"
-        self.long_name = f"covariance of {observable} with the energy"
+        self.long_name = f"covariance of {observable} with the {ensemble.energy_name}"
         self._mean = Moment(Column(observable, 1))
         self._product = Moment(Column(observable, 1), 1)
 
@@ -50,8 +51,8 @@ class ObservableSlope(ObservableCovariance):
 
     measure = Measure.OBSERVABLE_PER_KELVIN
 
-    def __init__(self, observable: str, scaling: Scaling) -> None:
-        super().__init__(observable, scaling)
+    def __init__(self, observable: str, scaling: Scaling, ensemble: Ensemble) -> None:
+        super().__init__(observable, scaling, ensemble)
         self.name = f"{observable}.slope"
         self.label = f"{observable}_slope"
         self.long_name = f"change of mean {observable} with temperature"

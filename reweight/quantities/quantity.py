@@ -46,6 +46,8 @@ class Quantity(ABC):
     label : str
         Name of the variable in outputs.
     long_name : str
+    comment : str
+        What a reader must know to compare it with a value from elsewhere; usually empty.
     measure : Measure
     scaling : Scaling
     observable : str
@@ -59,6 +61,7 @@ class Quantity(ABC):
     name: str
     label: str
     long_name: str
+    comment: str = ""
     measure: Measure
     scaling: Scaling = Scaling.INTENSIVE
     observable: str = ""

@@ -6,22 +6,37 @@ import codecs
 import gzip
 import hashlib
 import io
+import lzma
 import zlib
 from collections.abc import Iterator
 from concurrent.futures import ThreadPoolExecutor
 from contextlib import contextmanager
 from pathlib import Path
-from typing import NamedTuple, Protocol
+from typing import Any, NamedTuple, Protocol
 
 from reweight.errors import DataFileError
+from reweight.reading.compressed import ExpansionError, unpacked
+from reweight.reading.known import KnownPart
 from reweight.reading.source import refusal
+from reweight.study import Format
 
-__all__ = ["BLOCK_SIZE", "GZIP_MAGIC", "Block", "LineStream", "blocks", "opened"]
+__all__ = ["BLOCK_SIZE", "OLD_LINE_ENDS", "Block", "LineStream", "blocks", "opened"]
 
 BLOCK_SIZE = 1 << 22  # bytes; from 2 to 8 MB the speed is the same, below it falls
-GZIP_MAGIC = b"\x1f\x8b"
-_LONGEST_LINE = 1_000_000  # bytes
-_UNICODE_MARK = codecs.BOM_UTF8
+
+# Marks with which a file says its encoding itself; the longer ones first, since one begins like another.
+_UNICODE_MARKS = {
+    codecs.BOM_UTF32_LE: "utf-32",
+    codecs.BOM_UTF32_BE: "utf-32",
+    codecs.BOM_UTF16_LE: "utf-16",
+    codecs.BOM_UTF16_BE: "utf-16",
+    codecs.BOM_UTF8: "utf-8",
+}
+
+OLD_LINE_ENDS = (
+    "Its lines seem to end with carriage returns alone, as on very old Macs: convert it, for instance with "
+    "tr '\\r' '\\n' < OLD > NEW."
+)
 
 
 class Block(NamedTuple):
@@ -51,10 +66,10 @@ class _Bytes(Protocol):
 class _Hashing(io.RawIOBase):
     """A file that hashes what is read from it."""
 
-    def __init__(self, path: Path) -> None:
+    def __init__(self, path: Path, known: KnownPart | None) -> None:
         self._file = io.FileIO(path)
-        self._hash = hashlib.sha256()
-        self.size = 0
+        self._hash = hashlib.sha256() if known is None else known.digest.copy()
+        self.size = 0 if known is None else self._file.seek(known.ledger.size)
 
     def readable(self) -> bool:
         return True
@@ -90,10 +105,11 @@ class _Transcoded:
 class LineStream:
     """The lines of a text file, with every fault of the file as a whole put into words."""
 
-    def __init__(self, path: Path, stream: _Bytes, source: _Hashing) -> None:
+    def __init__(self, path: Path, stream: _Bytes, source: _Hashing, longest: int) -> None:
         self._path = path
         self._stream = stream
         self._source = source
+        self._longest = longest
 
     @property
     def size(self) -> int:
@@ -115,14 +131,16 @@ class LineStream:
         line : int
             Number of the line that comes next, for messages.
         """
-        with self._faults():
+        with self.faults():
             data = self._stream.read(size) if size else b""
             if not data.endswith(b"\n"):
-                rest = self._stream.readline(_LONGEST_LINE + 1)
-                if len(rest) > _LONGEST_LINE:
+                rest = self._stream.readline(self._longest + 1)
+                if len(rest) > self._longest:
+                    advice = OLD_LINE_ENDS if b"\r" in rest else "Is it a text file with rows of numbers?"
                     raise refusal(
                         self._path,
-                        f"lines must not be longer than {_LONGEST_LINE} bytes. Is it a text file with rows of numbers?",
+                        f"lines must not be longer than {self._longest} bytes. {advice} If its lines are meant to be "
+                        "this long, raise largest_line under [format] in the study.",
                         line=line + data.count(b"\n"),
                     )
                 data += rest
@@ -136,17 +154,22 @@ class LineStream:
         return data
 
     @contextmanager
-    def _faults(self) -> Iterator[None]:
+    def faults(self) -> Iterator[None]:
+        """Put what goes wrong while the file is read into words."""
         try:
             yield
         except EOFError as error:
             raise refusal(
                 self._path, "compressed file must be complete; it ends too early. Copy it again."
             ) from error
-        except (gzip.BadGzipFile, zlib.error) as error:
+        except ExpansionError as error:
             raise refusal(
-                self._path, f"compressed file must be undamaged; got: {error}. Copy it again."
+                self._path,
+                f"compressed file must not unpack to many times its size; got {error}. If it is meant to, raise "
+                "largest_expansion (bytes from one byte) under [format] in the study.",
             ) from error
+        except (gzip.BadGzipFile, zlib.error, lzma.LZMAError) as error:
+            raise self._damaged(error) from error
         except UnicodeError as error:
             raise refusal(
                 self._path, f"text must be in the encoding given under [format]; got: {error}."
@@ -154,33 +177,49 @@ class LineStream:
         except DataFileError:
             raise
         except OSError as error:
+            if error.errno is None:  # from a decompressor, not from the system
+                raise self._damaged(error) from error
             raise refusal(
                 self._path, f"data file must be readable; the system says: {error.strerror or error}."
             ) from error
 
+    def _damaged(self, error: Exception) -> DataFileError:
+        return refusal(self._path, f"compressed file must be undamaged; got: {error}. Copy it again.")
+
 
 @contextmanager
-def opened(path: Path, encoding: str | None) -> Iterator[LineStream]:
+def opened(path: Path, declared: Format, known: KnownPart | None = None) -> Iterator[LineStream]:
     """Open a text file, compressed or not, at its first line.
 
     Parameters
     ----------
     path : pathlib.Path
-    encoding : str or None
-        Encoding if it is not UTF-8; numbers and most of what surrounds them are plain ASCII.
+    declared : Format
+        Its encoding counts, if it is not UTF-8 and no mark at the beginning of the file says it; and its caps.
+    known : KnownPart, optional
+        Of a plain text file: it is opened at the first line after this part.
     """
-    with _Hashing(path) as source:
-        stream = io.BufferedReader(source, buffer_size=1 << 18)
-        if stream.peek(2).startswith(GZIP_MAGIC):
-            stream = io.BufferedReader(gzip.GzipFile(fileobj=stream), buffer_size=1 << 18)  # type: ignore[arg-type]
-        if encoding is not None and codecs.lookup(encoding).name not in {"utf-8", "ascii"}:
-            yield LineStream(path, _Transcoded(stream, encoding), source)
-        else:
-            lines = LineStream(path, stream, source)
-            with lines._faults():
-                if stream.peek(len(_UNICODE_MARK)).startswith(_UNICODE_MARK):
-                    stream.read(len(_UNICODE_MARK))
-            yield lines
+    with _Hashing(path, known) as source:
+        stream: io.BufferedReader[Any] = io.BufferedReader(source, buffer_size=1 << 18)
+        encoding = declared.encoding or "utf-8"
+        with LineStream(path, stream, source, declared.largest_line).faults():
+            if known is None:
+                stream = unpacked(stream, lambda: source.size, declared.largest_expansion)
+                encoding = _marked_encoding(stream) or encoding
+        plain = codecs.lookup(encoding).name in {"utf-8", "ascii"}
+        readable: _Bytes = stream if plain else _Transcoded(stream, encoding)
+        yield LineStream(path, readable, source, declared.largest_line)
+
+
+def _marked_encoding(stream: io.BufferedReader[Any]) -> str | None:
+    """Encoding a file says itself; the mark is skipped where it says nothing about the order of bytes."""
+    start = stream.peek(max(map(len, _UNICODE_MARKS)))
+    for mark, encoding in _UNICODE_MARKS.items():
+        if start.startswith(mark):
+            if encoding == "utf-8":
+                stream.read(len(mark))
+            return encoding
+    return None
 
 
 def blocks(lines: LineStream, *, size: int, first_line: int) -> Iterator[Block]:

@@ -28,7 +28,7 @@ def is_complete(path: Path) -> bool:
             return True
         try:
             return _Header(stream, version=magic[3]).promised_size() <= path.stat().st_size
-        except (struct.error, LookupError, OverflowError, OSError):
+        except (struct.error, LookupError, OverflowError, ValueError, OSError):
             return False
 
 

@@ -20,8 +20,20 @@ class FileLedger:
     kept, transient, replaced, dropped : int
         Rows that count, that belong to the discarded beginning of the run, that a restart wrote again, and that
         were left out for another reason.
+    why_dropped : str
+        The reason, if there is one.
     first_energy, last_energy : float or None
         Energy of the whole system in the first and last row, in the study's energy unit; None without rows.
+    first_time, last_time : float or None
+        Times of those rows as they stand in the file, if the study names a column of times.
+    lines : int
+        Line ends of a text file.
+    blank_lines : int
+        Lines of a text file with nothing in them.
+    repeated_headers : int
+        Headers written again inside the file, as by a simulation that was started again.
+    skipped_lines : int
+        Lines of a log that belong to no table of the declared header.
     size : int
         Bytes of the file.
     sha256 : str
@@ -34,8 +46,15 @@ class FileLedger:
     transient: int = 0
     replaced: int = 0
     dropped: int = 0
+    why_dropped: str = ""
     first_energy: float | None = None
     last_energy: float | None = None
+    first_time: float | None = None
+    last_time: float | None = None
+    lines: int = 0
+    blank_lines: int = 0
+    repeated_headers: int = 0
+    skipped_lines: int = 0
     size: int = 0
     sha256: str = ""
 

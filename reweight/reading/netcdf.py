@@ -6,6 +6,7 @@ safe, so every call into it holds one lock.
 
 from __future__ import annotations
 
+import os
 import threading
 from collections.abc import Iterator, Mapping, Sequence
 from concurrent.futures import ThreadPoolExecutor
@@ -26,8 +27,10 @@ __all__ = ["NETCDF_LOCK", "NETCDF_MAGICS", "NetcdfTable"]
 NETCDF_LOCK = threading.Lock()
 NETCDF_MAGICS = (b"CDF\x01", b"CDF\x02", b"CDF\x05", b"\x89HDF")
 
-_ROWS_AT_A_TIME = 1 << 16
-_LARGEST_STORED_CHUNK = 1 << 28  # bytes; a file can declare one of terabytes, which would be allocated
+# HDF5 keeps a file that it could not open, and takes another of the same place on the disk for it: that reads as zeros.
+_DAMAGED: set[tuple[int, int]] = set()
+
+_ROWS_AT_A_TIME = 1 << 18  # a quarter as many take twice as long
 _LARGEST_EXPANSION = 1100  # deflate shrinks at most 1032 times; more is a length that was only declared
 
 
@@ -38,7 +41,7 @@ class NetcdfTable:
     ----------
     path : pathlib.Path
     declared : Format
-        Says nothing about such files; accepted like by every reader.
+        Its caps.
 
     Raises
     ------
@@ -48,10 +51,17 @@ class NetcdfTable:
 
     def __init__(self, path: Path, declared: Format) -> None:
         self.path = path
+        self._declared = declared
         if not is_complete(path):
             raise refusal(path, "file must be as long as its header says; its end is missing. Copy it again.")
         with _Opened(path) as dataset, NETCDF_LOCK:
             self._names = tuple(_columns(dataset))
+        if len(self._names) > declared.most_columns:
+            raise refusal(
+                path,
+                f"file must have at most {declared.most_columns} numeric variables with one dimension; got "
+                f"{len(self._names)}. If it is meant to have as many, raise most_columns under [format] in the study.",
+            )
         if not self._names:
             raise refusal(path, "file must hold a numeric variable with one dimension; it has none.")
 
@@ -69,17 +79,32 @@ class NetcdfTable:
             with NETCDF_LOCK:
                 every = _columns(dataset)
                 variables = [every[name] for name in names]
+                for variable in variables:
+                    variable.set_always_mask(False)  # plain arrays where nothing is missing
                 rows = self._common_length(names, variables)
                 self._refuse_promises(names, variables, size)
             for start in range(0, rows, _ROWS_AT_A_TIME):
                 stop = min(start + _ROWS_AT_A_TIME, rows)
-                chunk = np.empty((stop - start, len(names)))
-                for place, (name, variable) in enumerate(zip(names, variables, strict=True)):
-                    chunk[:, place] = self._slice(name, variable, start, stop)
+                numbers = [
+                    self._slice(name, variable, start, stop)
+                    for name, variable in zip(names, variables, strict=True)
+                ]
+                # A single column, the most frequent case, need not be copied.
+                chunk = numbers[0][:, np.newaxis] if len(numbers) == 1 else np.stack(numbers, axis=1)
                 ledger.rows_read += len(chunk)
                 yield chunk
             ledger.sha256 = digest.result()
         ledger.size = size
+
+    def section_starts(self, column: int) -> list[float]:
+        """First number of a column; see :class:`reweight.reading.source.Table`."""
+        name = self._names[column]
+        with _Opened(self.path) as dataset:
+            with NETCDF_LOCK:
+                variable = _columns(dataset)[name]
+                self._common_length([name], [variable])
+                self._refuse_promises([name], [variable], self.path.stat().st_size)
+            return [float(self._slice(name, variable, 0, 1)[0])]
 
     def _common_length(self, names: Sequence[str], variables: Sequence[Any]) -> int:
         dimensions = {variable.get_dims()[0].name: len(variable.get_dims()[0]) for variable in variables}
@@ -97,24 +122,29 @@ class NetcdfTable:
     def _refuse_promises(self, names: Sequence[str], variables: Sequence[Any], size: int) -> None:
         for name, variable in zip(names, variables, strict=True):
             stored = variable.chunking()  # None in the classic formats
-            if isinstance(stored, list) and stored[0] * variable.dtype.itemsize > _LARGEST_STORED_CHUNK:
+            if (
+                isinstance(stored, list)
+                and stored[0] * variable.dtype.itemsize > self._declared.largest_chunk
+            ):
                 raise refusal(
                     self.path,
-                    f"variable {name!r} must be stored in chunks of at most {_LARGEST_STORED_CHUNK >> 20} MiB; "
-                    f"got {stored[0]} rows a chunk. Write it again with smaller chunks.",
+                    f"variable {name!r} must be stored in chunks of at most {self._declared.largest_chunk / 2**20:g} MiB; "
+                    f"got {stored[0]} rows a chunk. Write it again with smaller chunks, or raise largest_chunk (bytes) "
+                    "under [format] in the study.",
                 )
             declared = variable.shape[0] * variable.dtype.itemsize
-            if declared > _LARGEST_EXPANSION * size:
+            if declared > (self._declared.largest_expansion or _LARGEST_EXPANSION) * size:
                 raise refusal(
                     self.path,
                     f"variable {name!r} must fit the file; it declares {declared} bytes, the file has {size}. "
-                    "The file is incomplete or damaged.",
+                    "The file is incomplete or damaged. If it was packed this well, raise largest_expansion (bytes from "
+                    "one byte) under [format] in the study.",
                 )
 
     def _slice(self, name: str, variable: Any, start: int, stop: int) -> NDArray[np.float64]:
         try:
             with NETCDF_LOCK:
-                values = np.ma.asarray(variable[start:stop])
+                values = variable[start:stop]
         except (OSError, RuntimeError) as error:
             raise refusal(
                 self.path,
@@ -122,12 +152,12 @@ class NetcdfTable:
                 line=start + 1,
                 unit="row",
             ) from error
-        numbers = np.asarray(values.data, dtype=np.float64)
-        bad = ~np.isfinite(numbers)
-        if np.ma.is_masked(values):
-            bad |= np.ma.getmaskarray(values)
-        if bad.any():
-            index = int(np.argmax(bad))
+        with np.errstate(invalid="ignore"):  # a damaged float can be a signalling NaN; refused just below
+            missing = np.ma.is_masked(values)
+            numbers = np.asarray(np.ma.getdata(values), dtype=np.float64)
+        finite = np.isfinite(numbers)
+        if missing or not finite.all():
+            index = int(np.argmax(~finite | np.ma.getmaskarray(values)))
             found = "a missing value" if np.ma.getmaskarray(values)[index] else str(numbers[index])
             raise refusal(
                 self.path,
@@ -147,10 +177,19 @@ class _Opened:
     def __enter__(self) -> Any:
         import netCDF4
 
+        place = os.stat(self._path)
+        identity = (place.st_dev, place.st_ino)
+        if identity in _DAMAGED:
+            raise refusal(
+                self._path,
+                "file must be undamaged when it is first opened; it was not, and the HDF5 library would mix what it "
+                "remembers with what is there now. Start the program again, or copy the file under a new name.",
+            )
         try:
             with NETCDF_LOCK:
                 self._dataset = netCDF4.Dataset(self._path, "r")
-        except (OSError, RuntimeError) as error:
+        except (OSError, RuntimeError, UnicodeDecodeError) as error:
+            _DAMAGED.add(identity)
             raise refusal(
                 self._path, f"file must be a complete NetCDF file; NetCDF says: {error}. Copy it again."
             ) from error

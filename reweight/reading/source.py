@@ -12,6 +12,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from reweight.errors import DataFileError
+from reweight.notation import printable
 from reweight.reading.ledger import FileLedger
 
 __all__ = ["Table", "first_bytes", "refusal"]
@@ -52,10 +53,18 @@ class Table(Protocol):
         """
         ...
 
+    def section_starts(self, column: int) -> list[float]:
+        """First number of a column in each section of the file, found without reading the numbers between.
+
+        A text file has as many sections as headers; any other file is one.  While :meth:`chunks` runs, the ledger's
+        ``repeated_headers`` is the number of the section, counted from 0, that the rows just yielded are of.
+        """
+        ...
+
 
 def refusal(path: Path, text: str, *, line: int | None = None, unit: str = "line") -> DataFileError:
     """Make the error for a file, or for a line (or row, counted from 1) of it."""
-    place = f"{path}" if line is None else f"{path}, {unit} {line}"
+    place = printable(str(path)) if line is None else f"{printable(str(path))}, {unit} {line}"
     return DataFileError(f"{place}: {text}", path=str(path), line=line)
 
 

@@ -10,20 +10,25 @@ from __future__ import annotations
 
 import io
 import math
+import re
 from collections.abc import Iterator, Sequence
 from pathlib import Path
 
 import numpy as np
 from numpy.typing import NDArray
 
-from reweight.reading.blocks import BLOCK_SIZE, Block, LineStream, blocks, opened
-from reweight.reading.layout import BLANKS, find_layout, is_number, split, with_point
+from reweight.reading.blocks import BLOCK_SIZE, OLD_LINE_ENDS, Block, LineStream, blocks, opened
+from reweight.reading.known import KnownPart
+from reweight.reading.layout import BLANKS, split
 from reweight.reading.ledger import FileLedger
+from reweight.reading.sections import Sections, find_opening
 from reweight.reading.source import refusal
 from reweight.study import Format
 
 __all__ = ["TextTable"]
 
+_FORTRAN = bytes.maketrans(b"dD", b"ee")
+_TWO_NUMBERS = re.compile(r"[+-]?[0-9.]+[+-][0-9]{3}")
 _SHOWN = 60  # characters of a line or field in a message
 
 
@@ -37,6 +42,8 @@ class TextTable:
         What the study says about the look of its files.
     block_size : int
         Bytes parsed at a time; has no influence on the numbers.
+    known : KnownPart, optional
+        Beginning of the file, whose rows are left out.
 
     Raises
     ------
@@ -44,32 +51,75 @@ class TextTable:
         The file holds no row.
     """
 
-    def __init__(self, path: Path, declared: Format, *, block_size: int = BLOCK_SIZE) -> None:
+    def __init__(
+        self,
+        path: Path,
+        declared: Format,
+        *,
+        block_size: int = BLOCK_SIZE,
+        known: KnownPart | None = None,
+    ) -> None:
         self.path = path
-        self._encoding = declared.encoding
+        self._declared = declared
         self._block_size = block_size
-        with opened(path, self._encoding) as lines:
-            self._layout = find_layout(path, lines, declared)
+        self._known = known
+        with opened(path, declared) as lines:
+            self._opening = find_opening(path, lines, declared)
+        self._layout = self._opening.layout
 
     @property
     def names(self) -> tuple[str, ...]:
         """Names of the columns."""
         return self._layout.names
 
+    @property
+    def _first_line(self) -> int:
+        return self._layout.first_line if self._known is None else self._known.ledger.lines + 1
+
     def chunks(self, columns: Sequence[int], ledger: FileLedger) -> Iterator[NDArray[np.float64]]:
         """Read columns from the first row to the last; see :class:`reweight.reading.source.Table`."""
-        with opened(self.path, self._encoding) as lines:
-            for line in range(1, self._layout.first_line):
-                lines.read(0, line)
-            for block in blocks(lines, size=self._block_size, first_line=self._layout.first_line):
-                whole = self._without_unfinished_line(block)
-                rows = self._parsed(whole, columns) if whole.data else None
-                if rows is None:
-                    rows = self._scanned(whole, columns)
-                ledger.rows_read += len(rows)
-                if len(rows):
-                    yield rows
+        with opened(self.path, self._declared, self._known) as lines:
+            first_line = self._first_line
+            if self._known is None:
+                ledger.skipped_lines += self._opening.skipped
+                for line in range(1, first_line):
+                    ledger.blank_lines += not lines.read(0, line).strip()
+            sections = Sections(self.path, self._opening, ledger)
+            for block in blocks(lines, size=self._block_size, first_line=first_line):
+                for piece in sections.pieces(self._without_unfinished_line(block)):
+                    rows = self._parsed(piece, columns)
+                    if rows is None:
+                        rows = self._scanned(piece, columns, ledger)
+                    ledger.rows_read += len(rows)
+                    if len(rows):
+                        yield rows
+                ledger.lines = block.first_line - 1 + block.line_ends
             _note_source(lines, ledger)
+
+    def section_starts(self, column: int) -> list[float]:
+        """First number of a column in each section; see :class:`reweight.reading.source.Table`."""
+        ledger = FileLedger(str(self.path))
+        with opened(self.path, self._declared, self._known) as lines:
+            if self._known is None:
+                for line in range(1, self._first_line):
+                    lines.read(0, line)
+            else:
+                ledger.repeated_headers = self._known.ledger.repeated_headers
+            starts = [math.inf] * ledger.repeated_headers
+            sections = Sections(self.path, self._opening, ledger)
+            for block in blocks(lines, size=self._block_size, first_line=self._first_line):
+                for piece in sections.pieces(self._without_unfinished_line(block)):
+                    missing = ledger.repeated_headers - len(starts)
+                    if missing >= 0 and (first := self._first_number(piece, column)) is not None:
+                        starts += [math.inf] * missing + [first]  # a section without rows replaces none
+        return starts
+
+    def _first_number(self, piece: Block, column: int) -> float | None:
+        for place, line in enumerate(piece.data.split(b"\n")[:-1]):
+            one = Block(line + b"\n", piece.first_line + place, 1)
+            if len(rows := self._scanned(one, [column], FileLedger(""))):
+                return float(rows[0, 0])
+        return None
 
     def _without_unfinished_line(self, block: Block) -> Block:
         if block.data.endswith(b"\n"):
@@ -91,13 +141,18 @@ class TextTable:
 
         layout = self._layout
         numeric = layout.numeric
-        if not all(numeric[column] for column in columns):
+        if layout.thousands is not None or not all(numeric[column] for column in columns):
             return None
         if not all(numeric) and any(prefix.encode() in block.data for prefix in layout.comment_prefixes):
             return None  # words in a column of words may be a comment
+        data = block.data
+        if data.count(b"\r") != data.count(b"\r\n"):
+            return None  # a carriage return alone would end a line
+        if b"D" in data or b"d" in data:
+            data = data.translate(_FORTRAN)
         try:
             frame = pandas.read_csv(
-                io.BytesIO(block.data),
+                io.BytesIO(data),
                 sep=r"\s+" if layout.delimiter == BLANKS else layout.delimiter,
                 decimal=layout.decimal,
                 header=None,
@@ -117,14 +172,17 @@ class TextTable:
         rows = np.column_stack([frame[column].to_numpy() for column in columns])
         return rows if np.isfinite(rows).all() else None
 
-    def _scanned(self, block: Block, columns: Sequence[int]) -> NDArray[np.float64]:
+    def _scanned(self, block: Block, columns: Sequence[int], ledger: FileLedger) -> NDArray[np.float64]:
         """Numbers of a block read line by line, or the line that holds none."""
         layout = self._layout
         rows = []
         for line, raw in enumerate(block.data.split(b"\n")[:-1], start=block.first_line):
             text = raw.decode("utf-8", errors="replace")
             bare = text.strip()
-            if not bare or bare.startswith(layout.comment_prefixes):
+            if not bare:
+                ledger.blank_lines += 1
+                continue
+            if bare.startswith(layout.comment_prefixes):
                 continue
             fields = split(text, layout.delimiter)
             if len(fields) != len(layout.names):
@@ -132,7 +190,11 @@ class TextTable:
                     self.path,
                     f"rows must have {len(layout.names)} columns like the first one (line {layout.first_line}); "
                     f"got {len(fields)} in {_shortened(bare)}. "
-                    "A simulation that was stopped or started again may have damaged it: correct or delete it.",
+                    + (
+                        OLD_LINE_ENDS
+                        if "\r" in text.rstrip("\r")
+                        else "A simulation that was stopped or started again may have damaged it: correct or delete it."
+                    ),
                     line=line,
                 )
             rows.append([self._number(fields[column], column, line) for column in columns])
@@ -141,8 +203,8 @@ class TextTable:
     def _number(self, field: str, column: int, line: int) -> float:
         layout = self._layout
         name = layout.names[column]
-        if is_number(field, layout.decimal):
-            value = float(with_point(field, layout.decimal))
+        value = layout.number(field)
+        if value is not None:
             if math.isfinite(value):
                 return value
             raise refusal(
@@ -152,7 +214,7 @@ class TextTable:
             )
         raise refusal(
             self.path,
-            f"column {name!r} must hold finite numbers; got {_shortened(field)}.{_advice(field)}",
+            f"column {name!r} must hold finite numbers; got {_shortened(field)}.{_advice(field, layout.thousands)}",
             line=line,
         )
 
@@ -162,15 +224,20 @@ def _note_source(lines: LineStream, ledger: FileLedger) -> None:
     ledger.sha256 = lines.sha256
 
 
-def _advice(field: str) -> str:
+def _advice(field: str, thousands: str | None) -> str:
     if not field:
         return " An empty field is no number."
     if set(field) == {"*"}:
         return " Stars are a number that did not fit its field: print it with more digits."
-    if field.count(",") == 1:
-        return ' If this is a decimal comma, say decimal = "," under [format] in the study.'
-    if field[0].isdigit() and any(letter in "dD" for letter in field):
-        return " Write exponents with e."
+    if thousands is None and field.count(",") == 1:
+        return (
+            ' If this is a decimal comma, say decimal = "," under [format] in the study; if it separates thousands, '
+            'say thousands = ",".'
+        )
+    if thousands is None and re.fullmatch(r"[+-]?[0-9]{1,3}(,[0-9]{3})+(\.[0-9]*)?", field):
+        return ' If commas separate thousands, say thousands = "," under [format] in the study.'
+    if _TWO_NUMBERS.fullmatch(field):
+        return " Two numbers run together, or an exponent without its letter: print wider fields, and exponents with E."
     return ""
 
 

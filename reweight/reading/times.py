@@ -25,6 +25,13 @@ class Timekeeper:
         self._last = 0.0
         self._rows = 0
 
+    @classmethod
+    def resumed(cls, first: float, last: float, rows: int) -> Timekeeper:
+        """Go on after so many rows between two times."""
+        timekeeper = cls()
+        timekeeper._first, timekeeper._last, timekeeper._rows = first, last, rows
+        return timekeeper
+
     def add(self, times: NDArray[np.float64], path: Path, first_row: int) -> None:
         """Take the times of the next rows, the first of which has this number in its file (counted from 1).
 

@@ -9,7 +9,8 @@ from pathlib import Path
 from pydantic import ValidationError
 
 from reweight.errors import StudyError
-from reweight.study.problems import Problem, disagreements, not_built_yet, translated
+from reweight.study.patterns import expanded
+from reweight.study.problems import Problem, disagreements, not_built_yet, translated, unanswered
 from reweight.study.schema import Study
 
 __all__ = ["load_study", "parse_study"]
@@ -84,19 +85,22 @@ def _parse(text: str, *, folder: Path, path: Path | None) -> Study:
         raise StudyError(f"{name} must be TOML; {error}. Correct that line.") from error
     except RecursionError:
         raise StudyError(f"{name} must not nest tables and lists this deeply.") from None
+    values, matched = expanded(values, folder)
     study = None
-    problems = list(not_built_yet(values))
+    problems = [*unanswered(values), *not_built_yet(values)]
     try:
         study = Study.model_validate(values)
     except ValidationError as error:
         problems += translated(error.errors(), values)
     else:
+        study._text = text
+        study._folder = folder
+        study._path = path
+        study._matched = matched
+        study._says_temperature_unit = "temperature_unit" in values
         problems += disagreements(study, values)
     if study is None or problems:
         raise StudyError(_listed(name, problems), key=problems[0].key)
-    study._text = text
-    study._folder = folder
-    study._path = path
     return study
 
 

@@ -18,20 +18,16 @@ from pydantic_core import ErrorDetails
 
 from reweight import units
 from reweight.errors import InputError
-from reweight.study.schema import Columns, Conditions, Format, Observable, Run, Study, System
-from reweight.study.values import amount_and_unit
+from reweight.study.layouts import disagreeing_layouts, unmatched
+from reweight.study.questions import Location, open_questions
+from reweight.study.schema import Columns, Conditions, Format, Observable, Replica, Run, Study, System
+from reweight.study.values import COLD, amount_and_unit
 
-__all__ = ["Problem", "disagreements", "not_built_yet", "translated"]
-
-Location = tuple[str | int, ...]
+__all__ = ["Problem", "disagreements", "not_built_yet", "translated", "unanswered"]
 
 # Keys that belong to the study file but that nothing uses yet, with the value that asks for nothing.  Whoever
 # builds a feature deletes its row.
 _NOT_BUILT_YET: tuple[tuple[str, object], ...] = (
-    ("conditions.pressure", None),
-    ("conditions.degrees_of_freedom", 0),
-    ("columns.volume", None),
-    ("columns.temperature", None),
     ("observables.*.bins", None),
     ("report", None),
 )
@@ -39,6 +35,7 @@ _NOT_BUILT_YET: tuple[tuple[str, object], ...] = (
 _MODELS: Mapping[tuple[str, ...], type[BaseModel]] = {
     (): Study,
     ("run",): Run,
+    ("replica",): Replica,
     ("system",): System,
     ("conditions",): Conditions,
     ("format",): Format,
@@ -86,10 +83,22 @@ def not_built_yet(values: Mapping[str, Any]) -> Iterator[Problem]:
                 yield _problem(location, "is known but this version cannot use it yet; remove it", values)
 
 
+def unanswered(values: Mapping[str, Any]) -> Iterator[Problem]:
+    """Find what a draft left to be filled in."""
+    for location, candidates in open_questions(values):
+        found = (
+            f"the candidates are {' or '.join(map(repr, candidates))}" if candidates else "nothing told it"
+        )
+        yield _problem(location, f"must be filled in, in place of the question mark; {found}", values)
+
+
 def translated(details: Sequence[ErrorDetails], values: Mapping[str, Any]) -> Iterator[Problem]:
-    """Put the failed checks of the models into words."""
+    """Put the failed checks of the models into words; what is merely unanswered is no failure of its own."""
+    unanswered_keys = {location for location, _ in open_questions(values)}
     for detail in details:
         location = detail["loc"]
+        if location in unanswered_keys:
+            continue
         kind = detail["type"]
         context = detail.get("ctx", {})
         if kind == "extra_forbidden":
@@ -113,12 +122,15 @@ def disagreements(study: Study, values: Mapping[str, Any]) -> Iterator[Problem]:
         )
         yield _problem(("temperature_unit",), text, values)
         return
-    if study.system.energies_are != "total" and study.system.count is None:
-        text = f"must be given, because energies_are = {study.system.energies_are!r} is multiplied by it"
-        yield _problem(("system", "count"), text, values)
-    if study.format.decimal == study.format.delimiter:
-        text = f"must differ from format.decimal; both are {study.format.decimal!r}"
-        yield _problem(("format", "delimiter"), text, values)
+    meanings = {"energies_are": study.system.energies_are, "volumes_are": study.system.volumes_are}
+    for key, meaning in meanings.items():
+        if meaning != "total" and study.system.count is None:
+            text = f"must be given, because {key} = {meaning!r} is multiplied by it"
+            yield _problem(("system", "count"), text, values)
+    layouts = (*disagreeing_layouts(study), *unmatched(study))
+    for location, text in (*_signs(study.format), *_pressure(study), *layouts):
+        yield _problem(location, text, values)
+    yield from _ambiguous_temperature(study, values)
     for name in study.observables:
         if not (name.isidentifier() and name.isascii()) or name == "energy":
             text = 'must be named with letters, digits and "_", not beginning with a digit, and not "energy"'
@@ -127,30 +139,104 @@ def disagreements(study: Study, values: Mapping[str, Any]) -> Iterator[Problem]:
     for missing, given in (("time", "time_unit"), ("time_unit", "time")):
         if clock[missing] is None and clock[given] is not None:
             yield _problem(("columns", missing), f"must be given, because columns.{given} is", values)
-    if not study.used_runs:
+    if study.runs and not study.used_runs:
         yield _problem(("run",), "must have at least one run with use = true; all are left out", values)
+    for index, run in enumerate(study.runs):
+        for key, text in (*_run_disagreements(run, study), *_discard_disagreements(run.discard, study)):
+            yield _problem(("run", index, key), text, values)
+    for index, replica in enumerate(study.replicas):
+        for key, text in _discard_disagreements(replica.discard, study):
+            yield _problem(("replica", index, key), text, values)
+    yield from _repetitions("run", study.runs, values)
+    yield from _repetitions("replica", study.replicas, values)
+
+
+def _repetitions(
+    table: str, entries: Sequence[Run | Replica], values: Mapping[str, Any]
+) -> Iterator[Problem]:
     first_with_name: dict[str, int] = {}
     first_with_file: dict[str, int] = {}
-    for index, run in enumerate(study.runs):
-        for key, text in _run_disagreements(run, study):
-            yield _problem(("run", index, key), text, values)
-        if first_with_name.setdefault(run.name, index) != index:
+    for index, entry in enumerate(entries):
+        if first_with_name.setdefault(entry.name, index) != index:
             text = (
-                f"must be unique; got {run.name!r}, as for run[{first_with_name[run.name] + 1}] "
-                "(a run without a name is called after its first file)"
+                f"must be unique; got {entry.name!r}, as for {table}[{first_with_name[entry.name] + 1}] "
+                f"(a {table} without a name is called after its first file)"
             )
-            yield _problem(("run", index, "name"), text, values)
-        for file in run.files:
+            yield _problem((table, index, "name"), text, values)
+        for file in entry.files:
             same = posixpath.normpath(file)
             if same in first_with_file:
                 other = first_with_file[same] + 1
-                text = f"must not be read twice; got {file!r}, listed in run[{other}] already"
-                yield _problem(("run", index, "files"), text, values)
+                text = f"must not be read twice; got {file!r}, listed in {table}[{other}] already"
+                yield _problem((table, index, "files"), text, values)
             first_with_file.setdefault(same, index)
 
 
+def _signs(declared: Format) -> Iterator[tuple[Location, str]]:
+    """Find signs in numbers that stand for two things."""
+    signs = {
+        "decimal": declared.decimal or ("," if declared.thousands == "." else "."),
+        "thousands": declared.thousands,
+        "delimiter": declared.delimiter,
+    }
+    for key, other in (("delimiter", "decimal"), ("thousands", "decimal"), ("delimiter", "thousands")):
+        if signs[key] is not None and signs[key] == signs[other]:
+            yield ("format", key), f"must differ from format.{other}; both are {signs[key]!r}"
+
+
+def _pressure(study: Study) -> Iterator[tuple[Location, str]]:
+    """Find what does not go together at constant pressure, or with declared degrees of freedom."""
+    conditions, columns = study.conditions, study.columns
+    needed = {
+        ("conditions", "pressure"): conditions.pressure,
+        ("columns", "volume"): columns.volume,
+        ("columns", "volume_unit"): columns.volume_unit,
+    }
+    missing = [location for location, value in needed.items() if value is None]
+    given = [".".join(location) for location, value in needed.items() if value is not None]
+    if missing and given:
+        for location in missing:
+            yield (
+                location,
+                f"must be given, because {' and '.join(given)} {'is' if len(given) == 1 else 'are'}: pressure, volume "
+                "and its unit together make the enthalpy; for runs at constant volume give none of them",
+            )
+    elif not missing:
+        try:
+            _ = study.pressure_energy
+        except InputError as error:
+            yield ("conditions", "pressure"), f"cannot be used: {error}"
+        if study.system.states is not None:
+            yield (
+                ("system", "states"),
+                "must not be given with a pressure: at constant pressure the states of every volume count, and their "
+                "number is not finite",
+            )
+    if conditions.degrees_of_freedom and study.energy_kind == "total":
+        yield (
+            ("conditions", "degrees_of_freedom"),
+            'must not be given with energy_kind = "total": total energies fluctuate with their kinetic part already, '
+            f"which would count twice; got {conditions.degrees_of_freedom}",
+        )
+
+
+def _ambiguous_temperature(study: Study, values: Mapping[str, Any]) -> Iterator[Problem]:
+    if study.temperature_unit_is_certain:
+        return
+    cold = [run.temperature for run in study.runs if run.temperature is not None and run.temperature < COLD]
+    if cold:
+        text = (
+            f"must be given, because temperatures below {COLD:g} may be kelvin or degrees Celsius; got {min(cold):g}. "
+            'Write temperature_unit = "K" or "degC"'
+        )
+        yield _problem(("temperature_unit",), text, values)
+
+
 def _run_disagreements(run: Run, study: Study) -> Iterator[tuple[str, str]]:
-    if (run.temperature is None) == (run.inverse_temperature is None):
+    temperatures = (run.temperature, run.inverse_temperature)
+    if temperatures == (None, None) and study.columns.temperature is not None:
+        pass  # the rows say it
+    elif (run.temperature is None) == (run.inverse_temperature is None):
         found = "neither" if run.temperature is None else "both"
         yield "temperature", f"must be given, or beta instead, but not both; got {found}"
     elif run.temperature is not None:
@@ -159,22 +245,25 @@ def _run_disagreements(run: Run, study: Study) -> Iterator[tuple[str, str]]:
             yield "temperature", f"must lie above absolute zero{zero}; got {run.temperature}"
         elif not math.isfinite(run.beta(study)):
             yield "temperature", f"must be large enough for 1 / (k_B T) to be a number; got {run.temperature}"
-    if isinstance(run.discard, str) and run.discard != "auto":
-        _, unit = amount_and_unit(run.discard)
+    if not run.use and not run.reason.strip():
+        yield "reason", "must say why the run is left out, because use = false; it is printed and archived"
+
+
+def _discard_disagreements(discard: str | int, study: Study) -> Iterator[tuple[str, str]]:
+    if isinstance(discard, str) and discard != "auto":
+        _, unit = amount_and_unit(discard)
         clock = study.columns.time_unit
         if unit != "%" and clock is None:
             yield (
                 "discard",
-                f"as a time ({run.discard!r}) needs a clock: name the column of times and its unit under [columns], "
+                f"as a time ({discard!r}) needs a clock: name the column of times and its unit under [columns], "
                 'time = "t" and time_unit = "ps", or give rows (500) or a percentage ("10 %")',
             )
         elif unit != "%" and clock is not None:
             try:
                 units.time_factor(unit, clock)
             except InputError as error:
-                yield "discard", f"must be a time of the study's clock; got {run.discard!r}: {error}"
-    if not run.use and not run.reason.strip():
-        yield "reason", "must say why the run is left out, because use = false; it is printed and archived"
+                yield "discard", f"must be a time of the study's clock; got {discard!r}: {error}"
 
 
 def _matches(values: Any, pattern: Sequence[str], above: Location = ()) -> Iterator[tuple[Location, Any]]:
@@ -199,8 +288,8 @@ def _problem(location: Location, text: str, values: Mapping[str, Any]) -> Proble
 
 def _named(location: Location, values: Mapping[str, Any]) -> str:
     match location:
-        case ("run", int(index), *_):
-            run = values["run"][index]
+        case (("run" | "replica") as table, int(index), *_):
+            run = values[table][index]
             name = run.get("name") if isinstance(run, Mapping) else None
             return f" (run {name!r})" if isinstance(name, str) and name else ""
     return ""

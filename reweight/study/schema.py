@@ -22,6 +22,7 @@ from reweight.study.values import (
     EnergyUnit,
     FileNames,
     FiniteNumber,
+    Header,
     Line,
     Moments,
     Name,
@@ -30,6 +31,7 @@ from reweight.study.values import (
     NumberOfStates,
     PositiveInteger,
     PositiveNumber,
+    Pressure,
     RunName,
     SingleColumn,
     SummedColumns,
@@ -37,11 +39,13 @@ from reweight.study.values import (
     TimeUnit,
     TotalOrPer,
     Unit,
+    VolumeUnit,
     base_and_power,
     listed,
+    pressure_and_unit,
 )
 
-__all__ = ["Columns", "Conditions", "Format", "Observable", "Run", "Study", "System"]
+__all__ = ["Columns", "Conditions", "Format", "Observable", "Replica", "Run", "Study", "System"]
 
 
 class _Table(BaseModel):
@@ -54,6 +58,7 @@ class System(_Table):
     count: PositiveInteger | None = None
     per: Name = "particle"
     energies_are: TotalOrPer = "total"
+    volumes_are: TotalOrPer = "total"
     length: PositiveNumber | None = None
     dimension: PositiveInteger | None = None
     states: NumberOfStates | None = None
@@ -72,23 +77,39 @@ class System(_Table):
         """Number by which the files' energies are multiplied to have the energy of the whole system."""
         return 1 if self.energies_are == "total" or self.count is None else self.count
 
+    @property
+    def volume_multiplier(self) -> int:
+        """Number by which the files' volumes are multiplied to have the volume of the whole system."""
+        return 1 if self.volumes_are == "total" or self.count is None else self.count
+
 
 class Conditions(_Table):
     """``[conditions]``: how it was simulated."""
 
-    pressure: str | None = None
+    pressure: Pressure | None = None
     degrees_of_freedom: Annotated[int, Field(ge=0)] = 0
     exchange: bool = False
 
 
 class Format(_Table):
-    """``[format]``: what the look of a text file cannot tell; None means that it is told by the file."""
+    """``[format]``: what the look of a file cannot tell; None means that it is told by the file.
+
+    The last four keys are caps on what a file may declare or need; they are there to be raised.
+    """
 
     delimiter: Delimiter | None = None
-    decimal: Literal[".", ","] = "."
+    decimal: Literal[".", ","] | None = None
+    thousands: Literal[",", ".", "'", " "] | None = None
     comment: CommentPrefixes | None = None
     header: bool | None = None
     encoding: Encoding | None = None
+    table: Header | None = None
+    largest_line: PositiveInteger = 1_000_000  # bytes; a row of 10,000 columns has 250,000
+    most_columns: PositiveInteger = 10_000
+    largest_expansion: PositiveInteger | None = None
+    largest_chunk: PositiveInteger = (
+        1 << 28
+    )  # bytes; a NetCDF file can declare one of terabytes, to be allocated
 
 
 class Columns(_Table):
@@ -97,8 +118,9 @@ class Columns(_Table):
     energy: SummedColumns | None = None
     time: SingleColumn | None = None
     time_unit: TimeUnit | None = None
-    volume: SummedColumns | None = None
-    temperature: SummedColumns | None = None
+    volume: SingleColumn | None = None
+    volume_unit: VolumeUnit | None = None
+    temperature: SingleColumn | None = None
 
 
 class Observable(_Table):
@@ -113,16 +135,12 @@ class Observable(_Table):
     bins: Annotated[tuple[float, ...], BeforeValidator(listed)] | None = None
 
 
-class Run(_Table):
-    """``[[run]]``: samples of one simulation at one temperature, in one or several files."""
+class _Sampled(_Table):
+    """What all tables with files have."""
 
     name: RunName
-    temperature: Temperature | None = None
-    inverse_temperature: NotNegativeNumber | None = Field(default=None, alias="beta")
     files: FileNames
     discard: Discard = "auto"
-    use: bool = True
-    reason: Line = ""
 
     @model_validator(mode="before")
     @classmethod
@@ -132,16 +150,31 @@ class Run(_Table):
         files = listed(values.get("files"))
         if not isinstance(files, tuple) or not files or not isinstance(files[0], str):
             return {**values, "name": "unnamed"}  # the missing files are the problem to be reported
-        return {**values, "name": PurePath(files[0].removesuffix(".gz")).stem or "unnamed"}
+        unpacked = files[0].removesuffix(".gz").removesuffix(".bz2").removesuffix(".xz")
+        return {**values, "name": PurePath(unpacked).stem or "unnamed"}
+
+
+class Run(_Sampled):
+    """``[[run]]``: samples of one simulation, in one or several files.
+
+    At one temperature; or at several, if a column of the files says at which: then it stands for one run each.
+    """
+
+    temperature: Temperature | None = None
+    inverse_temperature: NotNegativeNumber | None = Field(default=None, alias="beta")
+    use: bool = True
+    reason: Line = ""
 
     def beta(self, study: Study) -> float:
         """Inverse temperature in 1 / energy unit of the study; 0 for an infinite temperature."""
         if self.inverse_temperature is not None:
             return self.inverse_temperature
         assert self.temperature is not None  # parsing made sure that one of the two is given
-        if math.isinf(self.temperature):
-            return 0.0
-        return 1.0 / (study.boltzmann_constant * units.to_kelvin(self.temperature, study.temperature_unit))
+        return study.beta(self.temperature)
+
+
+class Replica(_Sampled):
+    """``[[replica]]``: samples of one replica, whose temperature changes, in one or several files."""
 
 
 class Study(_Table):
@@ -159,12 +192,15 @@ class Study(_Table):
     format: Format = Format()
     columns: Columns = Columns()
     observables: dict[str, Observable] = {}
-    runs: Annotated[tuple[Run, ...], BeforeValidator(listed), Field(min_length=1)] = Field(alias="run")
+    runs: Annotated[tuple[Run, ...], BeforeValidator(listed)] = Field(default=(), alias="run")
+    replicas: Annotated[tuple[Replica, ...], BeforeValidator(listed)] = Field(default=(), alias="replica")
     report: dict[str, Any] = {}
 
     _text: str = PrivateAttr(default="")
     _folder: Path = PrivateAttr(default=Path())
     _path: Path | None = PrivateAttr(default=None)
+    _says_temperature_unit: bool = PrivateAttr(default=True)
+    _matched: dict[str, tuple[str, ...]] = PrivateAttr(default_factory=dict)
 
     @model_validator(mode="before")
     @classmethod
@@ -190,14 +226,49 @@ class Study(_Table):
         return self._path
 
     @property
+    def matched(self) -> Mapping[str, tuple[str, ...]]:
+        """Names of files with ``*``, ``?`` or ``[...]`` as written, and the files they stand for, in natural order."""
+        return self._matched
+
+    @property
+    def temperature_unit_is_certain(self) -> bool:
+        """Whether temperatures below the usual cannot be meant in another unit; see ``values.COLD``."""
+        return self._says_temperature_unit or self.energy_unit in (units.REDUCED, "K")
+
+    @property
+    def exchange(self) -> bool:
+        """Whether the runs are the temperatures of one replica exchange; several replicas always are."""
+        return self.conditions.exchange or len(self.replicas) > 1
+
+    @property
+    def files(self) -> tuple[str, ...]:
+        """Every data file, also of runs that are left out."""
+        return tuple(file for each in (*self.runs, *self.replicas) for file in each.files)
+
+    @property
     def boltzmann_constant(self) -> float:
         """k_B in the study's energy unit per kelvin; 1 in reduced units."""
         return units.boltzmann_constant(self.energy_unit, self.temperature_unit)
 
     @property
+    def pressure_energy(self) -> float | None:
+        """Pressure times one unit of the files' volumes, in the study's energy unit; None without a pressure."""
+        if self.conditions.pressure is None or self.columns.volume_unit is None:
+            return None
+        pressure, unit = pressure_and_unit(self.conditions.pressure)
+        one = units.pressure_volume_factor(unit, self.columns.volume_unit, self.energy_unit)
+        return pressure * one * self.system.volume_multiplier
+
+    @property
     def used_runs(self) -> tuple[Run, ...]:
         """Runs that are not left out."""
         return tuple(run for run in self.runs if run.use)
+
+    def beta(self, temperature: float) -> float:
+        """Inverse temperature in 1 / energy unit at a temperature in the study's unit; 0 if it is infinite."""
+        if math.isinf(temperature):
+            return 0.0
+        return 1.0 / (self.boltzmann_constant * units.to_kelvin(temperature, self.temperature_unit))
 
     def data_path(self, file: str) -> Path:
         """Where a file named in the study lies."""

@@ -16,6 +16,7 @@ from reweight import units
 from reweight.errors import InputError
 
 __all__ = [
+    "COLD",
     "CommentPrefixes",
     "Delimiter",
     "Discard",
@@ -23,6 +24,7 @@ __all__ = [
     "EnergyUnit",
     "FileNames",
     "FiniteNumber",
+    "Header",
     "Moments",
     "Name",
     "Normalisation",
@@ -30,6 +32,7 @@ __all__ = [
     "NumberOfStates",
     "PositiveInteger",
     "PositiveNumber",
+    "Pressure",
     "RunName",
     "SingleColumn",
     "SummedColumns",
@@ -37,15 +40,21 @@ __all__ = [
     "TimeUnit",
     "TotalOrPer",
     "Unit",
+    "VolumeUnit",
     "amount_and_unit",
     "base_and_power",
     "listed",
+    "pressure_and_unit",
 ]
 
 ColumnList = tuple[str | int, ...]
 
+COLD = (
+    200.0  # below, either scale is usual; above, kelvin is what a file without a unit means (common practice)
+)
 _LARGEST_MOMENT = 8
 _AMOUNT = re.compile(r"\s*([0-9]+(?:\.[0-9]*)?)\s*(%|[A-Za-zµμ]+)\s*")
+_PRESSURE = re.compile(r"\s*([+-]?[0-9]+(?:\.[0-9]*)?(?:[eE][+-]?[0-9]{1,3})?)\s*([^\s0-9].*?)\s*")
 
 
 def _columns(value: object) -> ColumnList:
@@ -87,6 +96,11 @@ def _one_line(value: str) -> str:
     return value
 
 
+def _header(value: str) -> str:
+    """Check the header of a table in a log; how many blanks or tabs are between its words does not matter."""
+    return _plain_name(" ".join(value.split()))
+
+
 def _run_name(value: str) -> str:
     if "/" in value or value in {".", ".."}:
         raise ValueError(f"must do without '/' (it becomes the name of a group); got {value!r}")
@@ -115,6 +129,34 @@ def _time_unit(value: str) -> str:
     except InputError as error:
         raise ValueError(str(error).removeprefix("unit of time ")) from None
     return value
+
+
+def _volume_unit(value: str) -> str:
+    reduced = value == units.REDUCED
+    return _pressure_volume(value, "volume", value, units.REDUCED if reduced else "bar", reduced=reduced)
+
+
+def _pressure(value: str) -> str:
+    if _PRESSURE.fullmatch(value) is None:
+        raise ValueError(f'must be a number and a unit, like "1 bar" or "0.5 reduced"; got {value!r}')
+    unit = pressure_and_unit(value)[1]
+    reduced = unit == units.REDUCED
+    return _pressure_volume(value, "pressure", units.REDUCED if reduced else "nm^3", unit, reduced=reduced)
+
+
+def _pressure_volume(value: str, what: str, volume_unit: str, pressure_unit: str, *, reduced: bool) -> str:
+    try:
+        units.pressure_volume_factor(pressure_unit, volume_unit, units.REDUCED if reduced else "J")
+    except InputError as error:
+        raise ValueError(str(error).removeprefix(f"unit of {what} ")) from None
+    return value
+
+
+def pressure_and_unit(text: str) -> tuple[float, str]:
+    """Split ``"1 bar"`` into number and unit."""
+    found = _PRESSURE.fullmatch(text)
+    assert found is not None  # checked when it was given
+    return float(found[1]), found[2]
 
 
 def number_of_states(value: str) -> str:
@@ -190,7 +232,7 @@ def _comment_prefixes(value: tuple[str, ...]) -> tuple[str, ...]:
 
 
 def _file_names(value: tuple[str, ...]) -> tuple[str, ...]:
-    if not value or not all(each.strip() and each.isprintable() for each in value):
+    if not value or not all(each.strip() and "\0" not in each for each in value):
         raise ValueError(f"must hold names of files; got {list(value)!r}")
     return value
 
@@ -227,10 +269,13 @@ def _finite_and_positive(value: float) -> float:
 
 
 Name = Annotated[str, AfterValidator(_plain_name)]
+Header = Annotated[str, AfterValidator(_header)]
 Line = Annotated[str, AfterValidator(_one_line)]
 RunName = Annotated[str, AfterValidator(_run_name)]
 Unit = Annotated[str, AfterValidator(_any_unit)]
 TimeUnit = Annotated[str, AfterValidator(_time_unit)]
+VolumeUnit = Annotated[str, AfterValidator(_volume_unit)]
+Pressure = Annotated[str, AfterValidator(_pressure)]
 EnergyUnit = Annotated[str, AfterValidator(_energy_unit)]
 PositiveInteger = Annotated[int, Field(gt=0)]
 FiniteNumber = Annotated[float, AfterValidator(_finite)]

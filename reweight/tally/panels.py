@@ -79,7 +79,7 @@ def check_magnitude(lowest: float, highest: float, width: float) -> None:
         worst = highest if highest > -lowest else lowest
         raise InputError(
             f"energies must be smaller than {LARGEST_INDEX * width:.3g}, given how little they fluctuate; "
-            f"got {worst:.6g}. Check the unit, or subtract a constant from all energies."
+            f"got {worst:.6g}. Check the unit, look for fill values, or subtract a constant from all energies."
         )
 
 

@@ -8,6 +8,7 @@ Shape letters: N rows, A observables, C tallied columns, B leaves, M keys, p ord
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -88,6 +89,14 @@ class RunTally:
             while tally._batch <= tally._waiting_count:  # it was found too wide for leaves before
                 tally._batch *= 2
         return tally
+
+    def copied(self, nodes: Nodes) -> RunTally:
+        """Copy to which rows can be added; nodes collect like those that this tally began with."""
+        nodes = Nodes(nodes.width, discrete=self.nodes.discrete, spacing=nodes.spacing)  # poured stays poured
+        thinned = None if self.thinned is None else replace(self.thinned)
+        return self.restored(
+            nodes, self.columns, self.observables, tail=self.tail, leaves=self.leaves, thinned=thinned
+        )
 
     @property
     def leaves(self) -> LeafSums | None:

@@ -61,6 +61,7 @@ def test_findings_say_all_that_a_record_needs() -> None:
 
     assert {each.check for each in found} == {
         "links",
+        "far samples",
         "length",
         "slowest times",
         "time scales",

@@ -86,7 +86,7 @@ def observed(study: Path) -> Path:
 
 
 def test_correlation_of_observables_is_shown_beside_that_of_the_energy(observed: Path, reweight) -> None:
-    header, cold, _ = reweight("runs", observed).stdout.splitlines()
+    header, cold, *_ = reweight("runs", observed).stdout.splitlines()
 
     assert re.search(r"independent samples +quick +slow", header)
     assert len(re.findall(r"one in", cold)) == 3

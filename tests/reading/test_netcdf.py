@@ -136,3 +136,30 @@ def test_huge_storage_chunks_are_refused_before_they_are_allocated(tmp_path):
         dataset.createVariable("E", "f8", ("sample",), chunksizes=(10**8,))
     with pytest.raises(DataFileError, match="must be stored in chunks of at most 256 MiB"):
         numbers(path, [0])
+
+
+def test_caps_may_be_raised_by_the_study(tmp_path):
+    path = tmp_path / "data.nc"
+    with netCDF4.Dataset(path, "w") as dataset:
+        dataset.createDimension("sample", 10**5)
+        dataset.createVariable("E", "f8", ("sample",), chunksizes=(10**5,), zlib=True)[:] = 1.0
+        dataset.createVariable("m", "f8", ("sample",))[:] = 1.0
+    for cap, message in (
+        ({"largest_chunk": 10_000}, "at most 0.0095.* MiB; got 100000 rows a chunk.*raise largest_chunk"),
+        ({"most_columns": 1}, "at most 1 numeric variables with one dimension; got 2.*raise most_columns"),
+    ):
+        with pytest.raises(DataFileError, match=message):
+            list(open_table(path, Format(**cap)).chunks([0], FileLedger("x")))
+    assert numbers(path, [0]).shape == (10**5, 1)
+
+
+def test_the_expansion_of_a_netcdf_file_may_be_capped_and_the_cap_raised(tmp_path):
+    path = tmp_path / "data.nc"
+    with netCDF4.Dataset(path, "w") as dataset:
+        dataset.createDimension("sample", 10**6)
+        dataset.createVariable("E", "f8", ("sample",), chunksizes=(10**6,), zlib=True)[:] = 1.0
+    with pytest.raises(DataFileError, match=r"must fit the file.*raise largest_expansion"):
+        list(open_table(path, Format(largest_expansion=10)).chunks([0], FileLedger("x")))
+    assert sum(
+        len(rows) for rows in open_table(path, Format(largest_expansion=2000)).chunks([0], FileLedger("x"))
+    )

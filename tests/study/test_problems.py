@@ -60,6 +60,40 @@ def test_other_schemas_are_refused(head, key, text):
         ('[format]\ndecimal = "x"', "format.decimal", "must be '.' or ','"),
         ('[format]\ndelimiter = "ab"', "format.delimiter", 'must be "blanks", "tab" or one character'),
         ('[format]\ndelimiter = ","\ndecimal = ","', "format.delimiter", "must differ from format.decimal"),
+        ('[format]\nthousands = "."\ndecimal = "."', "format.thousands", "must differ from format.decimal"),
+        (
+            '[format]\nthousands = ","\ndelimiter = ","',
+            "format.delimiter",
+            "must differ from format.thousands",
+        ),
+        ('[format]\nthousands = "."\ndelimiter = ","', "format.delimiter", "must differ from format.decimal"),
+        ('[format]\nthousands = "x"', "format.thousands", "must be ',', '.', \"'\" or ' '; got 'x'"),
+        ("[format]\nlargest_line = 0", "format.largest_line", "must be greater than 0; got 0"),
+        ("[format]\nmost_columns = 1.5", "format.most_columns", "must be a whole number; got 1.5"),
+        ("[format]\nlargest_expansion = 0", "format.largest_expansion", "must be greater than 0"),
+        ("[format]\nlargest_chunk = -1", "format.largest_chunk", "must be greater than 0"),
+        ('[system]\nvolumes_are = "per atom"', "system.count", "must be given, because volumes_are"),
+        ('[system]\nvolumes_are = "mean"', "system.volumes_are", 'must be "total" or "per "'),
+        ("[conditions]\npressure = 1", "conditions.pressure", "must be a text in quotes; got 1"),
+        (
+            '[conditions]\npressure = "bar"',
+            "conditions.pressure",
+            'must be a number and a unit, like "1 bar"',
+        ),
+        ('[conditions]\npressure = "1"', "conditions.pressure", "must be a number and a unit"),
+        ('[conditions]\npressure = "1 kJ"', "conditions.pressure", "must be a pressure; got 'kJ'"),
+        (
+            '[conditions]\npressure = "1 baar"',
+            "conditions.pressure",
+            "must be made of known units; got 'baar'",
+        ),
+        ('[columns]\nvolume_unit = "nm^2"', "columns.volume_unit", "must be a volume; got 'nm^2'"),
+        ('[columns]\nvolume = ["V", 1]', "columns.volume", "must be one column; got ['V', 1]"),
+        (
+            "[conditions]\ndegrees_of_freedom = -1",
+            "conditions.degrees_of_freedom",
+            "must be at least 0; got -1",
+        ),
         ('[format]\nencoding = "nope"', "format.encoding", 'must be a known encoding like "utf-8"'),
         ('[format]\ncomment = [""]', "format.comment", "must hold what begins a comment line"),
         ("[format]\nheader = 1", "format.header", "must be true or false"),
@@ -192,10 +226,6 @@ def test_at_least_one_run_is_needed():
 @pytest.mark.parametrize(
     ("lines", "key"),
     [
-        ('[conditions]\npressure = "1 bar"', "conditions.pressure"),
-        ("[conditions]\ndegrees_of_freedom = 3", "conditions.degrees_of_freedom"),
-        ('[columns]\nvolume = "V"', "columns.volume"),
-        ('[columns]\ntemperature = "T"', "columns.temperature"),
         ("[observables.m]\ncolumn = 1\nbins = [0.0, 1.0, 50]", "observables.m.bins"),
         ("[report]\nauthor = 'x'", "report"),
     ],
@@ -219,19 +249,19 @@ def test_later_keys_at_the_value_that_asks_for_nothing_are_fine():
 
 def test_all_problems_are_listed_at_once():
     error = refused(
-        'schema = 1\nenergy_unit = "eW"\n[system]\ncount = -1\n[conditions]\npressure = "1 bar"\n'
+        'schema = 1\nenergy_unit = "eW"\n[system]\ncount = -1\n[report]\nauthor = "x"\n'
         '[[run]]\nname = "x"\ntemperature = "hot"\nfiles = []\n'
     )
     assert str(error).startswith("study has 5 problems:\n")
     found = re.findall(r"^  (\S+)", str(error), flags=re.MULTILINE)
     assert found == [
-        "conditions.pressure",
+        "report",
         "energy_unit",
         "system.count",
-        "run[1].temperature",
         "run[1].files",
+        "run[1].temperature",
     ]
-    assert error.key == "conditions.pressure"
+    assert error.key == "report"
 
 
 @pytest.mark.parametrize("hostile", ["two\\nlines", "a\\u202eb", "red \\u001b[31m"])
@@ -239,3 +269,66 @@ def test_a_title_that_could_disturb_a_screen_is_refused(hostile):
     text = f'schema = 1\ntitle = "{hostile}"\nenergy_unit = "eV"\n[[run]]\ntemperature = 300.0\nfiles = "a.dat"\n'
     with pytest.raises(StudyError, match=r"title .*one line of printable text"):
         parse_study(text, folder=".")
+
+
+PRESSURE = '[conditions]\npressure = "1 bar"\n'
+VOLUME = '[columns]\nenergy = "E"\nvolume = "V"\n'
+KELVIN_RUN = '[[run]]\nname = "a"\ntemperature = 300.0\nfiles = "a.dat"\n'
+
+
+@pytest.mark.parametrize(
+    ("lines", "missing"),
+    [
+        (PRESSURE, ["columns.volume", "columns.volume_unit"]),
+        (VOLUME, ["conditions.pressure", "columns.volume_unit"]),
+        (VOLUME + 'volume_unit = "nm^3"\n', ["conditions.pressure"]),
+        (PRESSURE + VOLUME, ["columns.volume_unit"]),
+    ],
+)
+def test_pressure_volume_and_its_unit_are_given_together_or_not_at_all(lines, missing):
+    error = refused(f'schema = 1\nenergy_unit = "eV"\n{lines}{KELVIN_RUN}')
+    assert error.key == missing[0]
+    for key in missing:
+        assert f"{key} must be given, because " in str(error)
+    assert "for runs at constant volume give none of them" in str(error)
+
+
+@pytest.mark.parametrize(
+    ("head", "pressure", "unit"),
+    [('energy_unit = "eV"', "1 bar", "reduced"), ('energy_unit = "reduced"', "1 bar", "nm^3")],
+)
+def test_pressures_that_do_not_go_with_the_other_units_are_refused(head, pressure, unit):
+    run = KELVIN_RUN
+    error = refused(
+        f'schema = 1\n{head}\n[conditions]\npressure = "{pressure}"\n{VOLUME}volume_unit = "{unit}"\n{run}'
+    )
+    assert error.key == "conditions.pressure"
+    assert "must be 'reduced' all or none" in str(error)
+
+
+def test_a_number_of_states_at_constant_pressure_is_refused():
+    error = refused(
+        f'schema = 1\nenergy_unit = "eV"\n[system]\nstates = "2^8"\n{PRESSURE}{VOLUME}volume_unit = "nm^3"\n{KELVIN_RUN}'
+    )
+    assert error.key == "system.states"
+    assert "their number is not finite" in str(error)
+
+
+def test_a_kinetic_part_is_not_added_to_energies_that_have_it():
+    error = refused(
+        f'schema = 1\nenergy_unit = "eV"\nenergy_kind = "total"\n[conditions]\ndegrees_of_freedom = 12\n{KELVIN_RUN}'
+    )
+    assert error.key == "conditions.degrees_of_freedom"
+    assert 'must not be given with energy_kind = "total"' in str(error)
+    assert "would count twice; got 12" in str(error)
+
+
+@pytest.mark.parametrize("temperature", [25.0, -10.0, 199.0])
+def test_temperatures_that_may_be_degrees_celsius_need_a_unit(temperature):
+    text = 'schema = 1\nenergy_unit = "kJ/mol"\n{}[[run]]\ntemperature = {}\nfiles = "a"\n'
+    error = refused(text.format("", temperature))
+    assert error.key == "temperature_unit"
+    assert f"may be kelvin or degrees Celsius; got {temperature:g}." in str(error)
+    assert 'Write temperature_unit = "K" or "degC"' in str(error)
+    declared = parse_study(text.format('temperature_unit = "degC"\n', temperature), folder=".")
+    assert declared.temperature_unit == "degC"

@@ -73,6 +73,12 @@ def test_every_key_is_kept():
         "comment": ("!",),
         "header": False,
         "encoding": "latin-1",
+        "thousands": None,
+        "table": None,
+        "largest_line": 1_000_000,
+        "most_columns": 10_000,
+        "largest_expansion": None,
+        "largest_chunk": 1 << 28,
     }
     assert study.conditions.exchange is True
     assert study.columns.energy == ("bonded", 3)
@@ -132,7 +138,7 @@ def test_inverse_temperature_is_in_the_energy_unit(head, run, beta):
 
 
 def test_boltzmann_constant_is_that_of_the_energy_unit():
-    study = study_of(head='energy_unit = "eV"')
+    study = study_of(head='energy_unit = "eV"\ntemperature_unit = "K"')
     assert study.boltzmann_constant == pytest.approx(scipy.constants.k / scipy.constants.e, rel=1e-14)
 
 
@@ -180,3 +186,8 @@ def test_text_that_is_no_toml_is_refused_with_file_and_line(tmp_path, raw, messa
 def test_missing_study_file_or_folder_is_refused(tmp_path, name):
     with pytest.raises(StudyError, match="must be readable; the system says"):
         load_study(tmp_path / name)
+
+
+@pytest.mark.parametrize("file", ["a/640K.dat", "640K.dat.gz", "640K.dat.bz2", "640K.dat.xz", "640K"])
+def test_a_run_without_a_name_is_called_after_its_first_file(file):
+    assert study_of(run=f'temperature = 1.0\nfiles = ["{file}", "b.dat"]').runs[0].name == "640K"
