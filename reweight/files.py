@@ -11,16 +11,46 @@ import hashlib
 import os
 import secrets
 import shutil
+import signal
 import stat
+import threading
 from collections.abc import Collection, Iterable, Iterator
 from contextlib import contextmanager, suppress
 from pathlib import Path
 
 from reweight.errors import OutputError
 
-__all__ = ["hash_file", "new_folder", "refuse_contents", "refuse_target", "replacing", "write_text"]
+__all__ = [
+    "hash_file",
+    "interrupts_wait",
+    "new_folder",
+    "refuse_contents",
+    "refuse_target",
+    "replacing",
+    "write_text",
+]
 
 _NO_ROOM = {errno.ENOSPC, errno.EDQUOT, errno.EFBIG}
+
+
+@contextmanager
+def interrupts_wait() -> Iterator[None]:
+    """Let Ctrl-C wait until the block ends.
+
+    For short calls into libraries that hold locks: xarray's writer, interrupted between taking a lock and noting that
+    it has it, waits for itself forever.
+    """
+    if threading.current_thread() is not threading.main_thread():
+        yield  # interrupts reach the main thread only
+        return
+    waiting: list[int] = []
+    before = signal.signal(signal.SIGINT, lambda number, frame: waiting.append(number))
+    try:
+        yield
+    finally:
+        signal.signal(signal.SIGINT, before)
+    if waiting:
+        raise KeyboardInterrupt
 
 
 @contextmanager

@@ -3,13 +3,14 @@
 import errno
 import hashlib
 import os
+import signal
 import stat
 import threading
 
 import pytest
 
 from reweight.errors import OutputError
-from reweight.files import hash_file, replacing, write_text
+from reweight.files import hash_file, interrupts_wait, replacing, write_text
 
 
 def listing(folder):
@@ -148,3 +149,14 @@ def test_hash_is_that_of_the_bytes(tmp_path):
     # FIPS 180-2, appendix B.1 (from memory), and the standard library
     assert hash_file(tmp_path / "data").startswith("ba7816bf")
     assert hash_file(tmp_path / "data") == hashlib.sha256(b"abc").hexdigest()
+
+
+def test_an_interrupt_waits_for_the_end_of_a_block_that_must_not_be_broken():
+    done = []
+    with pytest.raises(KeyboardInterrupt), interrupts_wait():
+        signal.raise_signal(signal.SIGINT)
+        done.append("the rest of the block")
+
+    assert done == ["the rest of the block"]
+    with pytest.raises(KeyboardInterrupt):
+        signal.raise_signal(signal.SIGINT)  # and is not lost afterwards

@@ -18,7 +18,7 @@ from reweight.answers.presentation import presentation
 from reweight.answers.support import DEFAULT_QUANTITIES, counted_from, origin_beta
 from reweight.density_of_states import DensityOfStates
 from reweight.errors import InputError
-from reweight.files import replacing
+from reweight.files import interrupts_wait, replacing
 from reweight.labels import temperature_attributes
 from reweight.quantities.quantity import Quantity
 from reweight.uncertainty.intervals import rescaled_interval
@@ -264,5 +264,5 @@ def save_resampled(
     OutputError
         The file exists, or cannot be written.
     """
-    with replacing(path, force=force, inputs=inputs) as beside:
+    with replacing(path, force=force, inputs=inputs) as beside, interrupts_wait():
         dataset.to_netcdf(beside, engine="netcdf4")

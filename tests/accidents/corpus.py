@@ -1,7 +1,8 @@
 """Small accident files, each with its one defined outcome.
 
-The table in ``reweight/guide/accidents.md`` is made of this list (``python tests/accidents/corpus.py``), and a test
-compares the two: what the documentation promises is what the tests hold the program to.
+The table in ``reweight/guide/accidents.md`` is made of this list (``python tests/accidents/corpus.py``, which then sends
+every case through the installed command), and a test compares the two: what the documentation promises is what the tests
+hold the program to.
 
 Every case starts from a sound study of two runs, ``cold.dat`` and ``hot.dat``, and spoils one thing.
 """
@@ -12,15 +13,19 @@ import bz2
 import gzip
 import lzma
 import os
+import re
 import struct
+import subprocess
+import sys
 from collections.abc import Callable
 from dataclasses import dataclass
 from pathlib import Path
+from tempfile import TemporaryDirectory
 
 import netCDF4
 import numpy as np
 
-__all__ = ["ACCIDENTS", "FILE_NAMES", "GUIDE_PAGE", "Accident", "guide_page", "make_study"]
+__all__ = ["ACCIDENTS", "FILE_NAMES", "GUIDE_PAGE", "Accident", "broken_promise", "guide_page", "make_study"]
 
 ROWS = 600
 GUIDE_PAGE = Path(__file__).parents[2] / "reweight" / "guide" / "accidents.md"
@@ -725,6 +730,41 @@ FILE_NAMES = (
 )  # fmt: skip
 
 
+def broken_promise(case: Accident, status: int, stdout: str, stderr: str, *, wrote: bool) -> str:
+    """What is not as promised in the outcome of ``reweight combine``; empty if all is."""
+    if "Traceback" in stderr:
+        return "a traceback"
+    if case.outcome.startswith("refused"):
+        if status != 2 or stdout or wrote:
+            return f"not simply refused: status {status}, files written: {wrote}, printed {stdout!r}"
+        return "" if re.search(case.shows, stderr, re.DOTALL) else f"the refusal does not say it: {stderr}"
+    if not case.outcome.startswith("read") or status not in (0, 3):
+        return f"not read: status {status}, {stderr}"
+    return "" if re.search(case.shows, stdout, re.DOTALL) else f"the summary does not say it: {stdout}"
+
+
+def through_the_installed_command() -> int:
+    """Every accident by ``reweight combine`` in a process of its own; prints and counts broken promises."""
+    cases = [each for group in ACCIDENTS.values() for each in group]
+    broken = 0
+    for case in cases:
+        with TemporaryDirectory() as name:
+            study = make_study(Path(name))
+            case.spoil(study.parent)
+            before = sorted(study.parent.iterdir())
+            program = Path(sys.executable).with_name("reweight")
+            done = subprocess.run(
+                [program, "combine", study], capture_output=True, text=True, check=False, timeout=120
+            )
+            wrote = sorted(study.parent.iterdir()) != before
+            told = broken_promise(case, done.returncode, done.stdout, done.stderr, wrote=wrote)
+        if told:
+            broken += 1
+            print(f"{case.what}: {told}")
+    print(f"{len(cases)} accidents through the installed command, {broken} broken promises")
+    return broken
+
+
 def guide_page() -> str:
     """The page of the user documentation."""
     parts = [GUIDE_HEAD]
@@ -736,3 +776,4 @@ def guide_page() -> str:
 
 if __name__ == "__main__":
     GUIDE_PAGE.write_text(guide_page(), "utf-8")
+    sys.exit(bool(through_the_installed_command()))

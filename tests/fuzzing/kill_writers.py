@@ -211,6 +211,8 @@ def trials(
                 here.append(f"traceback:\n{said}")
             found["ended before the program's first line"] += 1
         faults += [f"{' '.join(writer.arguments)}: {each}" for each in here]
+    if count and found["status 0"] == count:
+        faults.append("no signal arrived in time: nothing was tried")
     print(f"{count} times {number.name}: {len(faults)} faults; {dict(sorted(found.items()))}", flush=True)
     for each in faults:
         print(each)
@@ -224,6 +226,8 @@ def main() -> int:
     parser.add_argument("--interrupts", type=int, default=200)
     parser.add_argument("--seed", type=int, default=1)
     given = parser.parse_args()
+    # A shell starts programs in the background with interrupts ignored, and what they start inherits that.
+    signal.signal(signal.SIGINT, signal.default_int_handler)
     rng = random.Random(given.seed)  # noqa: S311  # moments, not secrets
     with TemporaryDirectory() as name:
         folder = Path(name) / "work"
