@@ -40,7 +40,8 @@ def interrupts_wait() -> Iterator[None]:
     For short calls into libraries that hold locks: xarray's writer, interrupted between taking a lock and noting that
     it has it, waits for itself forever.
     """
-    if threading.current_thread() is not threading.main_thread():
+    ignored = signal.getsignal(signal.SIGINT) == signal.SIG_IGN
+    if ignored or threading.current_thread() is not threading.main_thread():
         yield  # interrupts reach the main thread only
         return
     waiting: list[int] = []

@@ -151,7 +151,15 @@ def test_hash_is_that_of_the_bytes(tmp_path):
     assert hash_file(tmp_path / "data") == hashlib.sha256(b"abc").hexdigest()
 
 
-def test_an_interrupt_waits_for_the_end_of_a_block_that_must_not_be_broken():
+@pytest.fixture
+def interrupts():
+    """Interrupts as at a terminal: what is started in the background inherits that they are ignored."""
+    before = signal.signal(signal.SIGINT, signal.default_int_handler)
+    yield
+    signal.signal(signal.SIGINT, before)
+
+
+def test_an_interrupt_waits_for_the_end_of_a_block_that_must_not_be_broken(interrupts):
     done = []
 
     def interrupted():
@@ -164,3 +172,11 @@ def test_an_interrupt_waits_for_the_end_of_a_block_that_must_not_be_broken():
     assert done == ["the rest of the block"]
     with pytest.raises(KeyboardInterrupt):
         signal.raise_signal(signal.SIGINT)  # and is not lost afterwards
+
+
+def test_interrupts_that_are_ignored_stay_so(interrupts):
+    signal.signal(signal.SIGINT, signal.SIG_IGN)
+
+    with interrupts_wait():
+        signal.raise_signal(signal.SIGINT)
+    signal.raise_signal(signal.SIGINT)
