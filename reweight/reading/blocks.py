@@ -228,6 +228,15 @@ def blocks(lines: LineStream, *, size: int, first_line: int) -> Iterator[Block]:
     with ThreadPoolExecutor(max_workers=1) as ahead:
         following = ahead.submit(lines.read, size, line)
         while data := following.result():
+            if data.startswith(
+                codecs.BOM_UTF8
+            ):  # the parser would take it for the beginning of a file, and drop it
+                raise refusal(
+                    lines._path,
+                    "a byte-order mark must stand at the beginning of a file only; got one in its midst. Two files were "
+                    "put together: name them both instead.",
+                    line=line,
+                )
             block = Block(data, line, data.count(b"\n"))
             line += block.line_ends
             following = ahead.submit(lines.read, size, line)

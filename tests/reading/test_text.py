@@ -2,6 +2,7 @@
 
 import gzip
 import hashlib
+from pathlib import Path
 
 import numpy as np
 import pytest
@@ -375,3 +376,15 @@ def test_fast_and_careful_reading_agree_on_what_a_row_is(tmp_path_factory, field
         except DataFileError as error:
             outcomes.append(error.args[0].split(": ", 1)[1])
     assert outcomes[0] == outcomes[1]
+
+
+@pytest.mark.parametrize("block_size", [8, 1 << 20])
+def test_a_byte_order_mark_in_the_midst_is_refused_wherever_blocks_end(
+    tmp_path: Path, block_size: int
+) -> None:
+    path = tmp_path / "joined.dat"
+    path.write_bytes(b"1;2\n3;4\n\xef\xbb\xbf5;6\n")
+    table = TextTable(path, Format(), block_size=block_size)
+
+    with pytest.raises(DataFileError, match=r"line 3"):
+        list(table.chunks([0, 1], FileLedger("joined.dat")))
